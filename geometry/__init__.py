@@ -1,0 +1,1 @@
+"""What the cell is made of: lattice, conductors, ports, mesh. Knows no field."""
