@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import numpy as np
 from scanward.cases.job import Job, Limit, ScanPlan
+from scanward.cases.result import Accuracy, Provenance, Result, peak_memory, versions
 from scanward.geometry.cell import UnitCell
 from scanward.geometry.conductor import Material
 from scanward.geometry.lattice import Lattice
@@ -139,4 +140,16 @@ def sheet_job(*, ports: int = 1, frequencies: int = 3, limits: tuple[Limit, ...]
         co_polar_angle=0.0,
         element_size=2.5e-3,
         remesh=cell,
+    )
+
+
+def sheet_result(
+    *, ports: int = 1, frequencies: int = 3, loss: float = 0.0, limits: tuple[Limit, ...] | None = None
+) -> Result:
+    """A finished run of `sheet_job` with made-up error estimates."""
+    job = sheet_job(ports=ports, frequencies=frequencies, limits=limits)
+    sweep = sheet_sweep(job.frequency, job.scan.points, ports=ports, loss=loss)
+    accuracy = Accuracy(3.0, 5, 0.01, 0.02, {"reflection": 0.01, "gain_drop": 0.05}, 120, 270)
+    return Result(
+        job, sweep, accuracy, Provenance(versions(), 12.5, peak_memory(), "2026-01-01T00:00:00+00:00")
     )
