@@ -3,7 +3,7 @@
     G(r) = SUM_m exp(-j kt.rho_m) exp(-jkR_m) / (4 pi R_m),   R_m = |r - rho_m|      (1/length)
 
 Three routes: the plain sum over Floquet modes (z != 0); Kummer's transformation with screened (Yukawa)
-images, for any z, sharing no formula with Ewald's; and Ewald's sum (P. P. Ewald, 1921; K. E. Jordan et al.,
+images at z = 0, sharing no formula with Ewald's; and Ewald's sum (P. P. Ewald, 1921; K. E. Jordan et al.,
 J. Comp. Phys. 63, 222, 1986; both from memory) with the split kept from overflowing (F. Capolino, D. R.
 Wilton, W. A. Johnson, J. Comp. Phys. 223, 250, 2007). Time factor exp(+j w t); lengths in one unit, `k` in
 its inverse.
