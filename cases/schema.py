@@ -1,0 +1,270 @@
+"""The vocabulary of the case file: every table and key, its kind, range, default and one line of explanation.
+
+Reader, error messages and documentation all take their words from here.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from types import MappingProxyType
+
+DEGREE = 0.017453292519943295
+STEEPEST = 89.9 * DEGREE  # at 90 deg the wave runs along the array and the periodic sums have no limit
+
+# Largest counts a case may ask for, so that a slip of a digit is told rather than tried.
+MOST_FREQUENCIES = 2001
+MOST_DIRECTIONS = 20000
+MOST_MAP_POINTS = 201
+MOST_ROWS = 2000
+MOST_TABLES = 200
+
+
+@dataclass(frozen=True)
+class Key:
+    """One key of a table.
+
+    Attributes
+    ----------
+    kind : a quantity of `quantity.UNITS`, or "text", "flag", "count", "choice", "wave" (amplitude @ phase),
+        "along" (length or fraction), "co" (polarisation), "any" (read later by the table's own rule)
+    text : one line of explanation
+    shape : () a single value, (3,) three values, ("n", 3) a list of such, ("n",) a list
+    required, default : default None means "not given"; else as it would be written in the file
+    low, high : allowed range in SI (angles rad); `above` instead of `low` when the bound itself is excluded
+    choices : the words allowed
+    """
+
+    kind: str
+    text: str
+    shape: tuple[int | str, ...] = ()
+    required: bool = False
+    default: object = None
+    low: float | None = None
+    above: float | None = None
+    high: float | None = None
+    choices: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class Table:
+    """One table: its title in the file, an explanation, and its keys in the order they are documented."""
+
+    title: str
+    text: str
+    keys: Mapping[str, Key]
+
+
+def _table(title: str, text: str, /, **keys: Key) -> Table:
+    return Table(title, text, MappingProxyType(keys))
+
+
+def _length(text: str, **more: object) -> Key:
+    return Key("length", text, above=0.0, **more)  # type: ignore[arg-type]
+
+
+def _point(text: str, **more: object) -> Key:
+    return Key("length", text, shape=(3,), **more)  # type: ignore[arg-type]
+
+
+def _direction(text: str, default: tuple[int, int, int]) -> Key:
+    return Key("ratio", text, shape=(3,), default=list(default))
+
+
+TOP = _table(
+    "top level",
+    "What the case is, and whether there is a ground plane.",
+    title=Key("text", "What the case is, in one line.", required=True),
+    notes=Key("text", "Free text: assumptions, sources, history.", default=""),
+    ground=Key("flag", "A perfectly conducting plane at z = 0 below everything.", default=False),
+)
+
+BAND = _table(
+    "[band]",
+    "Frequencies: start, stop and points, or one frequency, or a list of them.",
+    start=Key("frequency", "Lowest frequency.", above=0.0),
+    stop=Key("frequency", "Highest frequency.", above=0.0),
+    points=Key(
+        "count", "Number of frequencies from start to stop, evenly spaced.", low=1, high=MOST_FREQUENCIES
+    ),
+    frequency=Key("frequency", "A single frequency.", above=0.0),
+    frequencies=Key("frequency", "A list of frequencies.", shape=("n",), above=0.0),
+)
+
+LATTICE = _table(
+    "[lattice]",
+    "Where the elements stand: two vectors in the plane of the array.",
+    a=Key("length", "First lattice vector (x, y).", shape=(2,), required=True),
+    b=Key("length", "Second lattice vector (x, y).", shape=(2,), required=True),
+)
+
+_COMMON = {
+    "kind": Key("text", "Which conductor: wire, strip, plate, disc, polygon or mesh.", required=True),
+    "name": Key("text", "Name, unique in the case.", required=True),
+    "element_size": _length("Target size of this conductor's mesh elements; default: that of [mesh]."),
+}
+_METAL = {
+    "conductivity": Key("conductivity", "Bulk conductivity; without it the metal is perfect.", above=0.0),
+}
+_SHEET = {
+    **_METAL,
+    "sheet_resistance": Key("resistance", "Surface resistance in ohm per square.", low=0.0),
+    "metal_thickness": _length("Metal thickness; goes with conductivity. Default: many skin depths."),
+}
+_WIRE = {**_METAL, "wire_resistance": Key("resistance_per_length", "Series resistance of the wire.", low=0.0)}
+_NORMAL = {"normal": _direction("Direction the face looks, any length.", (0, 0, 1))}
+
+CONDUCTORS: Mapping[str, Table] = MappingProxyType({
+    "wire": _table("[[conductor]]", "Round wire along a polyline.",
+        **_COMMON,
+        points=Key("length", "Corners of the axis (x, y, z), at least two.", shape=("n", 3), required=True),
+        radius=_length("Radius of the wire.", required=True),
+        **_WIRE),
+    "strip": _table("[[conductor]]", "Flat strip along a straight centre line.",
+        **_COMMON,
+        start=_point("Start of the centre line.", required=True),
+        end=_point("End of the centre line.", required=True),
+        width=_length("Width across.", required=True),
+        **_NORMAL, **_SHEET),
+    "plate": _table("[[conductor]]", "Flat rectangle.",
+        **_COMMON,
+        centre=_point("Centre.", required=True),
+        size=Key("length", "Size along axis, and across.", shape=(2,), required=True, above=0.0),
+        axis=_direction("Direction of the first side, any length.", (1, 0, 0)),
+        **_NORMAL, **_SHEET),
+    "disc": _table("[[conductor]]", "Flat disc, or ring.",
+        **_COMMON,
+        centre=_point("Centre.", required=True),
+        radius=_length("Radius.", required=True),
+        inner_radius=Key("length", "Radius of the hole; 0 for a full disc.", default=0, low=0.0),
+        **_NORMAL, **_SHEET),
+    "polygon": _table("[[conductor]]", "Flat polygon.",
+        **_COMMON,
+        points=Key("length", "Corners (x, y, z) in order, at least three, in one plane.", shape=("n", 3),
+                   required=True),
+        **_SHEET),
+    "mesh": _table("[[conductor]]", "Triangles and lines from a mesh file.",
+        **_COMMON,
+        file=Key("text", "Mesh file, relative to the case file.", required=True),
+        unit=_length("Length of one unit of the file.", required=True),
+        offset=_point("Where the file's origin goes.", default=[0, 0, 0]),
+        wire_radius=_length("Radius of the file's lines, which become wires."),
+        **_SHEET, wire_resistance=_WIRE["wire_resistance"]),
+})  # fmt: skip
+
+_PLACE = {
+    "name": Key("text", "Name, unique among ports and loads.", required=True),
+    "conductor": Key("text", "Name of the conductor the gap is cut into.", required=True),
+    "at": _point("Middle of the gap, on the centre line of a wire or strip."),
+    "along": Key("along", "Instead of `at`: length along the centre line from its start, or fraction of it."),
+    "base": Key("flag", "Instead of `at`: the gap sits at the wire's foot on the ground.", default=False),
+    "line": Key("length", "Instead of `at`, on plate, disc, polygon, mesh: the two ends of the gap line; "
+                "positive current crosses it from right to left, seen from the side the normal looks to.",
+                shape=(2, 3)),
+    "width": _length("Width of the gap along the current; default: 4 radii on a wire, the strip's width on a "
+                     "strip, the length of the gap line elsewhere."),
+    "reverse": Key("flag", "Reverse the sense of positive current (default: from start to end of the "
+                   "conductor; at a base: up from the ground).", default=False),
+}  # fmt: skip
+
+PORT = _table(
+    "[[port]]",
+    "A gap with a generator.",
+    **_PLACE,
+    resistance=Key(
+        "resistance", "Reference and generator resistance.", default="50 ohm", above=0.0, high=1e6
+    ),
+    drive=Key("wave", "Amplitude @ phase of the case's excitation, as a power wave.", default="1 @ 0 deg"),
+)
+
+LOAD = _table(
+    "[[load]]",
+    "A gap with lumped resistance, inductance and capacitance in series; all zero: a short.",
+    **_PLACE,
+    resistance=Key("resistance", "Series resistance.", default="0 ohm", low=0.0),
+    inductance=Key("inductance", "Series inductance.", default="0 nH", low=0.0),
+    capacitance=Key("capacitance", "Series capacitance; left out: none.", above=0.0),
+)
+
+SCAN = _table(
+    "[scan]",
+    "Scan directions: cuts and a u-v map inside a cone, or a list of directions.",
+    cone=Key("angle", "Half-angle of the scan volume.", default="60 deg", above=0.0, high=STEEPEST),
+    planes=Key("angle", "Azimuths of the cuts, each from -cone to cone; [] for none. Default 0, 45, 90 deg, "
+               "or none where points or cosines are given.", shape=("n",),
+               low=-720 * DEGREE, high=720 * DEGREE),
+    step=Key("angle", "Step along the cuts.", default="2 deg", low=0.01 * DEGREE, high=45 * DEGREE),
+    grid=Key("count", "Points per axis of the u-v map, odd; 0 for none. Default 11, or 0 where points or "
+             "cosines are given.", low=0, high=MOST_MAP_POINTS),
+    points=Key("angle", "Single directions [theta, phi].", shape=("n", 2)),
+    cosines=Key("ratio", "Single directions [u, v]; invisible space is allowed here only.", shape=("n", 2),
+                low=-20.0, high=20.0),
+)  # fmt: skip
+
+POLARISATION = _table(
+    "[polarisation]",
+    "Which polarisation is wanted.",
+    co=Key("co", 'Co-polar: "x", "y", an angle from x (Ludwig 3), or circular "right" or "left" (IEEE).',
+           default="x"),
+)  # fmt: skip
+
+MESH = _table(
+    "[mesh]",
+    "How finely the conductors are cut up.",
+    element_size=_length("Target edge length of the elements."),
+    per_wavelength=Key("ratio", "Instead: elements per wavelength at the highest frequency.", default=20,
+                       low=6.0, high=400.0),
+    method=Key("choice", "structured: regular, canonical shapes only; unstructured: any shape.",
+               choices=("structured", "unstructured"), default="structured"),
+)  # fmt: skip
+
+ACCURACY = _table(
+    "[accuracy]",
+    "How exactly the periodic sums are carried out.",
+    tolerance=Key("ratio", "Relative accuracy of the sums.", default=1e-6, low=1e-12, high=1e-2),
+)
+
+LIMITS = _table(
+    "[limits]",
+    "What the element must meet, over the band and the cone.",
+    reflection=Key("level", "Active reflection of every port under the case's drive, at most.", high=0.0),
+    port=Key("text", "Restrict `reflection` to this port."),
+    gain_drop=Key("level", "Realised co-polar gain below broadside, at most.", low=0.0),
+    cross_polar=Key("level", "Cross-polar relative to co-polar, at most.", high=60.0),
+    axial_ratio=Key("level", "Axial ratio, at most.", low=0.0),
+    efficiency=Key("ratio", "Radiated over accepted power, at least.", above=0.0, high=1.0),
+    grating_lobe=Key("level", "Grating lobes relative to the main wave, at most.", high=60.0),
+    cone=Key("angle", "Half-angle where the limits hold; default: the scan cone.", above=0.0, high=STEEPEST),
+)
+
+EXPECTED: Mapping[str, str] = MappingProxyType({
+    "resistance": "resistance", "reactance": "resistance", "reflection": "level", "gain": "level",
+    "cross_polar": "level", "axial_ratio": "level", "efficiency": "ratio",
+})  # fmt: skip
+
+EXPECT = _table(
+    "[[expect]]",
+    "A number the case must give, and where it comes from.",
+    quantity=Key("choice", "What is expected.", required=True, choices=tuple(EXPECTED)),
+    value=Key("any", "The value, with its unit.", required=True),
+    tolerance=Key("any", "Largest deviation, in the same unit.", required=True),
+    origin=Key("text", "Where the value comes from.", required=True),
+    frequency=Key(
+        "frequency", "Which frequency of the band; may be left out if there is one only.", above=0.0
+    ),
+    theta=Key("angle", "Scan angle from broadside.", default="0 deg", low=0.0, high=STEEPEST),
+    phi=Key("angle", "Azimuth from x.", default="0 deg"),
+    port=Key("text", "Which port; default: the first."),
+)
+
+SINGLE: Mapping[str, Table] = MappingProxyType({
+    "band": BAND, "lattice": LATTICE, "scan": SCAN, "polarisation": POLARISATION, "mesh": MESH,
+    "accuracy": ACCURACY, "limits": LIMITS,
+})  # fmt: skip
+REPEATED: Mapping[str, Table | Mapping[str, Table]] = MappingProxyType({
+    "conductor": CONDUCTORS, "port": PORT, "load": LOAD, "expect": EXPECT,
+})  # fmt: skip
+NOT_YET: Mapping[str, str] = MappingProxyType({
+    "layer": "layered stacks are not in this version.",
+    "breadboard": "finite breadboards are not in this version.",
+})  # fmt: skip
