@@ -1,0 +1,26 @@
+"""All figures of a run, in the order of the report."""
+
+from __future__ import annotations
+
+from .charts import reflection_chart, scan_maps
+from .cuts import band, cross_polar_cuts, gain_cuts, power_cuts, reflection_cuts
+from .drawing import cell_drawing, lattice_diagram
+from .plot import Drawing
+from .result import Result
+
+
+def draw_all(result: Result) -> tuple[Drawing, ...]:
+    """Every figure the result has data for; figures that need cuts, a map or a band are left out without
+    them."""
+    drawn = (
+        reflection_cuts(result),
+        scan_maps(result),
+        band(result),
+        reflection_chart(result),
+        gain_cuts(result),
+        cross_polar_cuts(result),
+        power_cuts(result),
+        lattice_diagram(result.job),
+        cell_drawing(result.job.cell),
+    )
+    return tuple(drawing for drawing in drawn if drawing is not None)
