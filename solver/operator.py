@@ -1,0 +1,91 @@
+"""The periodic moment matrix Z(k, kt), explicit in wavenumber and scan (design: the central equation).
+
+    Z = j k eta (A_near + A_far) + (eta / j k) (Q_near + Q_far)
+
+tested and expanded in the same functions, so that ``Z I = V`` with ``V_i = int f_i . E_impressed``.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ..geometry.cell import UnitCell
+from .basis import build_basis
+from .cloud import build_cloud
+from .ewald import choose_split
+from .far import FarPart
+from .near import build_near
+
+Floats = NDArray[np.float64]
+Complexes = NDArray[np.complex128]
+
+ETA = 376.730313668  # free-space wave impedance, ohm (CODATA 2018)
+SPEED_OF_LIGHT = 299792458.0  # m/s
+
+
+class PeriodicOperator:
+    """Fills the near part once; every (k, kt) afterwards is a linear combination plus a sum over Floquet waves.
+
+    Parameters
+    ----------
+    cell : UnitCell
+    k_max : largest wavenumber asked for, rad/m
+    tolerance : relative truncation error of both sums; sets every cut-off (`ewald.choose_split`)
+    splitting : overrides the splitting parameter E, 1/m (tests)
+    """
+
+    def __init__(self, cell: UnitCell, k_max: float, tolerance: float = 1e-6, *, splitting: float | None = None):
+        self.cell, self.k_max, self.tolerance = cell, k_max, tolerance
+        self.lattice = cell.lattice.reduced
+        self.basis = build_basis(cell.mesh, cell.lattice, ground=cell.ground)
+        self.cloud = build_cloud(self.basis)
+        self.split = choose_split(self.lattice.area, k_max, tolerance, splitting)
+        self.near = build_near(self.basis, self.cloud, self.lattice, self.split, cell.ground)
+        self.far = FarPart(self.cloud, self.lattice, self.split, tolerance, cell.ground, k_max)
+        self._combined: tuple[float, list[Floats]] | None = None
+
+    @property
+    def n(self) -> int:
+        """Number of unknowns."""
+        return self.basis.n
+
+    @property
+    def near_bytes(self) -> int:
+        """Memory of the stored near part."""
+        return sum(block.current.nbytes + block.charge.nbytes for block in self.near)
+
+    def matrix(self, k: float, kt: Floats) -> Complexes:
+        """Z(k, kt) in ohm, (n, n), for perfect conductors; k in rad/m (real, <= k_max), kt (2,) rad/m."""
+        if not 0 < k <= self.k_max * (1 + 1e-9):
+            raise ValueError(f"k = {k:g} rad/m lies outside (0, {self.k_max:g}], the range the near part was filled for")
+        kt = np.asarray(kt, dtype=float)
+        z = self.far.matrix(k, kt, 1j * k * ETA, ETA / (1j * k))
+        for block, reactance in zip(self.near, self._at(k), strict=True):
+            if block.cell == (0, 0):
+                z.imag += reactance
+                continue
+            phase = np.exp(-1j * (kt @ self.lattice.positions(np.array([block.cell]))[0]))
+            z[np.ix_(block.rows, block.columns)] += (1j * phase) * reactance
+            z[np.ix_(block.columns, block.rows)] += (1j * phase.conjugate()) * reactance.T
+        return z
+
+    def _at(self, k: float) -> list[Floats]:
+        """Reactance of every near block at k: ``k eta A - (eta / k) Q``; kept for the next scan point."""
+        if self._combined is None or self._combined[0] != k:
+            combined = []
+            for block in self.near:
+                powers = k ** (2.0 * np.arange(len(block.current)))
+                combined.append(
+                    np.tensordot(k * ETA * powers, block.current, 1)
+                    - np.tensordot((ETA / k) * powers, block.charge, 1)
+                )
+            self._combined = (k, combined)
+        return self._combined[1]
+
+    def __repr__(self) -> str:
+        return (
+            f"PeriodicOperator({self.n} unknowns, {len(self.cloud.points)} points, E = {self.split.splitting:.4g} 1/m, "
+            f"{self.split.powers} powers of k^2, {len(self.near)} near blocks of {self.near_bytes / 1e6:.0f} MB, "
+            f"{len(self.far.levels.heights)} levels)"
+        )
