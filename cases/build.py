@@ -246,9 +246,9 @@ def build_frequencies(values: Values, where: str = "[band]") -> Floats:
             raise InputError(f"'{name}' is missing.", where=where, allowed="start, stop and points together")
     start, stop, points = values["start"], values["stop"], values["points"]
     if stop < start or (points == 1) != (stop == start):
+        ends = f"start = {in_words(start, 'frequency')}, stop = {in_words(stop, 'frequency')}"
         raise InputError(
-            f"start = {in_words(start, 'frequency')}, stop = {in_words(stop, 'frequency')}, points = {points} "
-            "is no band.",
+            f"{ends}, points = {points} is no band.",
             where=where,
             allowed="start below stop with two points or more, or both equal with one",
         )

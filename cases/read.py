@@ -21,7 +21,7 @@ from .fields import Values, read_table, write_table
 from .job import Expectation, Job, ScanPlan
 from .quantity import SPEED_OF_LIGHT, Quantities
 from .scan_plan import build_scan_plan
-from .schema import CONDUCTORS, MOST_TABLES, NOT_YET, REPEATED, SINGLE, STEEPEST, TOP, Table
+from .schema import CONDUCTORS, MOST_SOLUTIONS, MOST_TABLES, NOT_YET, REPEATED, SINGLE, STEEPEST, TOP, Table
 
 LARGEST_FILE = 5_000_000  # bytes
 
@@ -56,6 +56,8 @@ def _load(path: Path) -> str:
         raise InputError("there is no such file.", hint=nearest(path.name, siblings)) from None
     except OSError as fault:
         raise InputError(f"the file cannot be opened: {fault.strerror}.") from None
+    except ValueError as fault:  # a null byte in the name
+        raise InputError(f"the file cannot be opened: {fault}.") from None
     if data is None:
         raise InputError(f"the file has {path.stat().st_size} bytes.", allowed=f"at most {LARGEST_FILE}")
     try:
@@ -91,6 +93,7 @@ def parse_case(text: str, *, path: Path | None = None, overrides: Mapping[str, s
         for k, values in enumerate(repeated["expect"], start=1)
     )
     scan = _scan_plan(single["scan"], expect)
+    _check_solutions(len(draft.frequencies), len(scan.points))
     co_polar, angle = _polarisation(single["polarisation"]["co"])
     return Job(
         title=top["title"],
@@ -116,6 +119,8 @@ def _parse_toml(text: str) -> dict[str, object]:
         raise InputError(
             f"this is not TOML: {fault}.", hint='Quantities stand in quotes: radius = "0.5 mm".'
         ) from None
+    except ValueError as fault:  # a number of thousands of digits
+        raise InputError(f"this is not TOML: {fault}.") from None
     except RecursionError:
         raise InputError("the lists are nested too deep to be a case.") from None
 
@@ -178,7 +183,7 @@ def _repeated(raw: Mapping[str, object], name: str, quantities: Quantities) -> l
 
 def _conductor_table(row: Mapping[str, object], place: str) -> Table:
     kind = row.get("kind")
-    if kind not in CONDUCTORS:
+    if not isinstance(kind, str) or kind not in CONDUCTORS:
         told = "'kind' is missing" if kind is None else f"'{kind}' is no kind of conductor"
         raise InputError(
             f"{told}.",
@@ -186,7 +191,7 @@ def _conductor_table(row: Mapping[str, object], place: str) -> Table:
             allowed=", ".join(CONDUCTORS),
             hint=nearest(str(kind), CONDUCTORS),
         )
-    return CONDUCTORS[str(kind)]
+    return CONDUCTORS[kind]
 
 
 def _place(table: str, number: int, row: Mapping[str, object]) -> str:
@@ -285,7 +290,7 @@ def _scan_plan(scan: Values, expect: tuple[Expectation, ...]) -> ScanPlan:
         scan["grid"] = 0 if listed else 11
     points = np.zeros((0, 2)) if scan["points"] is None else scan["points"]
     for number, (theta, _) in enumerate(points, start=1):
-        if not 0 <= theta <= STEEPEST:
+        if not 0 <= theta <= STEEPEST * (1 + 1e-12):
             raise InputError(
                 f"theta = {np.degrees(theta):.6g} deg is no direction of the half-space.",
                 where=f"[scan], key 'points', entry {number}",
@@ -301,6 +306,16 @@ def _scan_plan(scan: Values, expect: tuple[Expectation, ...]) -> ScanPlan:
         points=points,
         cosines=scan["cosines"],
     )
+
+
+def _check_solutions(frequencies: int, directions: int) -> None:
+    count = frequencies * directions
+    if count > MOST_SOLUTIONS:
+        raise InputError(
+            f"{frequencies} frequencies times {directions} directions are {count} solutions.",
+            where="[band] and [scan]",
+            allowed=f"at most {MOST_SOLUTIONS}",
+        )
 
 
 def _polarisation(co: str | float) -> tuple[str, float]:

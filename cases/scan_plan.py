@@ -73,8 +73,9 @@ def build_scan_plan(
     Returns
     -------
     ScanPlan
-        Cuts share their broadside point, and the map shares points with the cuts, so a point's own phi is
-        that of the first to ask for it (0 at broadside): take a cut's azimuth from `planes`, not from its points.
+        Cuts share their broadside point, and the map shares points with the cuts, so a point's own phi
+        is that of the first to ask for it (0 at broadside): take a cut's azimuth from `planes`, not from
+        its points.
 
     Raises
     ------

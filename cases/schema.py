@@ -18,6 +18,7 @@ MOST_DIRECTIONS = 20000
 MOST_MAP_POINTS = 201
 MOST_ROWS = 2000
 MOST_TABLES = 200
+MOST_SOLUTIONS = 1_000_000  # frequencies times directions
 
 
 @dataclass(frozen=True)
