@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.sparse import coo_array
 from scipy.sparse.csgraph import connected_components
-from scipy.spatial import cKDTree
+from scipy.spatial import KDTree
 
 from .conductor import Conductor
 from .mesh import Mesh
@@ -24,7 +24,7 @@ def _no_elements(width: int) -> Ints:
 
 @dataclass(frozen=True)
 class Piece:
-    """Mesh of one conductor on its own points: triangles (n, 3) and, of a wire of `radius`, segments (n, 2)."""
+    """Mesh of one conductor on its own points: triangles (n, 3), or segments (n, 2) of a wire of `radius`."""
 
     conductor: int
     points: Floats
@@ -46,9 +46,7 @@ def merge_points(points: Floats, tolerance: float) -> tuple[Floats, Ints]:
     (m, 3) points in order of first appearance, and (n,) indices into them.
     """
     n = len(points)
-    pairs = (
-        cKDTree(points).query_pairs(tolerance, output_type="ndarray") if n else np.zeros((0, 2), dtype=int)
-    )
+    pairs = KDTree(points).query_pairs(tolerance, output_type="ndarray") if n else np.zeros((0, 2), dtype=int)
     graph = coo_array((np.ones(len(pairs)), (pairs[:, 0], pairs[:, 1])), shape=(n, n))
     _, group = connected_components(graph, directed=False) if n else (0, np.zeros(0, dtype=int))
     _, first, inverse = np.unique(group, return_index=True, return_inverse=True)

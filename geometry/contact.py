@@ -49,7 +49,7 @@ def segment_distance(p: Floats, q: Floats, r: Floats, s: Floats) -> tuple[Floats
 
 
 def parallel_overlap(p: Floats, q: Floats, r: Floats, s: Floats) -> Floats:
-    """Length that the projections of two nearly parallel segments share (0 where the angle exceeds 1 mrad), (n,)."""
+    """Length that two nearly parallel segments share in projection (0 above 1 mrad between them), (n,)."""
     d1, d2 = q - p, s - r
     l1, l2 = np.linalg.norm(d1, axis=1), np.linalg.norm(d2, axis=1)
     parallel = np.linalg.norm(np.cross(d1, d2), axis=1) < 1e-3 * l1 * l2
@@ -67,7 +67,7 @@ def triangle_normals(t: Floats) -> tuple[Floats, Floats]:
 
 
 def overlap_depth(t1: Floats, t2: Floats) -> Floats:
-    """How deep two triangles (n, 3, 3) reach into each other: the least overlap over all separating axes, (n,).
+    """How deep triangles (n, 3, 3) reach into each other: the least overlap over all separating axes, (n,).
 
     Zero when they only touch (share a corner or an edge, or one stands on the other), negative when apart.
     """
@@ -98,8 +98,8 @@ def overlap_depth(t1: Floats, t2: Floats) -> Floats:
 def clip_to_triangle(p: Floats, q: Floats, t: Floats, margin: Floats) -> tuple[Floats, Floats]:
     """Part of the segments p-q that runs within `margin` (n,) of triangles t (n, 3, 3).
 
-    Returns its length (n,), zero where a segment leaves the plane of the triangle by more than the margin over
-    that part, and the largest distance from the plane there.
+    Returns its length (n,), zero where no part does, and the largest distance from the plane of the triangle
+    there.
     """
     normal, _ = triangle_normals(t)
     lo, hi = np.zeros(len(p)), np.ones(len(p))

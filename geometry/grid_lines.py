@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections import defaultdict
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -66,9 +67,9 @@ def rectangle_lines(
 ) -> list[tuple[Floats, Floats]]:
     """Grid lines (u, v) of each rectangle, starting at 0.
 
-    Lines run through the `points` (n, 3) where wires attach, through the centres of sheet gaps, and through the
-    ends of every edge that touches another rectangle or a periodic copy (displaced by `shifts` (k, 3)); both
-    sides of a contact get the same lines. Raises InputError when that would need ever finer cells.
+    Lines run through the `points` (n, 3) where wires attach, through the centres of sheet gaps, and through
+    the ends of every edge that touches another rectangle or a periodic copy (displaced by `shifts` (k, 3));
+    both sides of a contact get the same lines. Raises InputError when that would need ever finer cells.
     """
     cuts = [[_Cuts(side, tolerance) for side in r.sides] for r in regions]
     for region, mine, attached in zip(regions, cuts, points, strict=True):
@@ -103,7 +104,7 @@ def _cut_at_gaps(
 def _edge_contacts(
     regions: Sequence[Region], cuts: list[list[_Cuts]], shifts: Floats, tolerance: float
 ) -> list[EdgeContact]:
-    """All edges that lie along a grid direction on another rectangle; adds the line they lie on to its cuts."""
+    """All edges that lie along a grid direction on another rectangle; adds their line to its cuts."""
     found = []
     for i, one in enumerate(regions):
         corners = one.corners
@@ -171,8 +172,8 @@ def _share_cuts(cuts: list[list[_Cuts]], contacts: Sequence[EdgeContact], sizes:
             for axis in mine:
                 if len(axis.values) > 20 + 8 * axis.values[-1] / size:
                     raise InputError(
-                        "strips or plates touch (in the cell or across its border) at places that no structured "
-                        "grid of this element size can match.",
+                        "strips or plates touch (in the cell or across its border) at places that no "
+                        "structured grid of this element size can match.",
                         where="[mesh]",
                         hint="Set the mesh method to 'unstructured'.",
                     )
@@ -192,7 +193,7 @@ def _matched_counts(
     for c in contacts:
         one, two = cuts[c.one][c.d1], cuts[c.two][c.d2]
         shared = one.between(c.low, c.high)
-        for x, y in zip(shared[:-1], shared[1:], strict=True):
+        for x, y in pairwise(shared):
             a = (c.one, c.d1, one.position(x))
             b = (c.two, c.d2, min(two.position(c.sign * x + c.offset), two.position(c.sign * y + c.offset)))
             parent[root(a)] = root(b)
@@ -212,7 +213,7 @@ def _matched_counts(
 
 
 def _own_counts(values: list[float], size: float, other_side: float) -> list[int]:
-    """Cells per interval of one axis by size alone; the long side gets at least two, the total is even or one."""
+    """Cells per interval of one axis by size alone; at least two along the long side; mirror symmetric."""
     steps = np.diff(values)
     counts = [cell_count(float(step), size) for step in steps]
     if sum(counts) == 1 and values[-1] >= other_side:

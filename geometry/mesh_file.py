@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import io
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,16 +16,15 @@ from .shapes import place_of
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
-IGNORED = {"vertex"}
 
 
 def read_mesh_file(conductor: MeshFile, tolerance: float) -> tuple[Floats, Ints, Ints]:
     """Points (n, 3) in metres, triangles (m, 3) and lines (k, 2) of a mesh file (msh, vtk, vtu, stl, ...).
 
-    Points closer than `tolerance` (m) are made one, quadrilaterals are cut along their shorter diagonal, points
-    without elements are dropped. Raises InputError when the file cannot be read or holds elements of another
-    kind, lines without `wire_radius`, or an edge with more than two triangles. Lines along edges of triangles mark
-    borders in many formats; they are left out.
+    Points closer than `tolerance` (m) are made one, quadrilaterals are cut along their shorter diagonal,
+    points without elements are dropped, and so are lines along edges of triangles (many formats mark borders
+    so). Raises InputError when the file cannot be read or holds elements of another kind, lines without
+    `wire_radius`, or an edge with more than two triangles.
     """
     where = place_of(conductor, "path")
     raw = _read(conductor, where)
@@ -43,14 +43,14 @@ def read_mesh_file(conductor: MeshFile, tolerance: float) -> tuple[Floats, Ints,
             triangles.append(_split_quads(points, data))
         elif block.type == "line":
             lines.append(data)
-        elif block.type not in IGNORED:
+        elif block.type != "vertex":
             raise InputError(
                 f"the file has elements of type '{block.type}'.", where=where, allowed="triangle, quad, line"
             )
     return _clean(conductor, points, np.concatenate(triangles), np.concatenate(lines), tolerance)
 
 
-def _read(conductor: MeshFile, where: str):
+def _read(conductor: MeshFile, where: str) -> Any:
     import meshio
 
     if not conductor.path.is_file():
@@ -59,10 +59,7 @@ def _read(conductor: MeshFile, where: str):
     try:
         with contextlib.redirect_stdout(said), contextlib.redirect_stderr(said):
             return meshio.read(conductor.path)
-    except (
-        SystemExit,
-        Exception,
-    ) as fault:  # meshio lets errors of every kind through, and may end the process
+    except (SystemExit, Exception) as fault:  # meshio lets all kinds through, and may end the process
         reason = " ".join((said.getvalue() or str(fault)).split())[:200]
         raise InputError(
             f"'{conductor.path}' cannot be read as a mesh ({reason or type(fault).__name__}).",
@@ -88,18 +85,18 @@ def _clean(
     triangles = group[inverse[: triangles.size]].reshape(-1, 3)
     lines = np.sort(group[inverse[triangles.size :]].reshape(-1, 2), axis=1)
     edges = np.sort(triangles[:, [0, 1, 1, 2, 2, 0]].reshape(-1, 2), axis=1)
-    kinds, count = np.unique(edges, axis=0, return_counts=True)
-    lines = lines[~(lines[:, None] == kinds).all(2).any(1)] if len(kinds) else lines
+    kinds, count = np.unique(edges @ [len(merged), 1], return_counts=True)
+    lines = lines[~np.isin(lines @ [len(merged), 1], kinds)]
     if not len(triangles) and not len(lines):
         raise InputError(f"'{conductor.path}' has neither triangles nor lines.", where=where)
     if len(lines) and not (conductor.wire_radius and conductor.wire_radius > 0):
         raise InputError(
-            f"the file has {len(lines)} lines, which become wires, but wire_radius is {conductor.wire_radius}.",
+            f"{len(lines)} lines of the file become wires, but wire_radius is {conductor.wire_radius}.",
             where=place_of(conductor, "wire_radius"),
             allowed="a length above zero",
         )
     if (count > 2).any():
-        a, b = merged[kinds[np.argmax(count)]].tolist()
+        a, b = merged[list(divmod(int(kinds[np.argmax(count)]), len(merged)))].tolist()
         raise InputError(
             f"{count.max()} triangles of the file share the edge from {a} to {b} m.",
             where=where,

@@ -59,12 +59,12 @@ def mesh_conductors(
     element_size
         Wanted length of segments and triangle edges, m.
     gaps
-        Ports and loads: their centres become nodes or mesh lines where possible. A wire gap must lie within one
-        straight leg, a sheet gap on a sheet.
+        Ports and loads: their centres become nodes or mesh lines where possible. A wire gap must lie within
+        one straight leg, a sheet gap on a sheet.
     method
         "structured": canonical shapes by grids (polygons of more than four corners still need gmsh);
-        "unstructured": all sheets together by gmsh, so that any contact and overlap becomes a common edge. Where
-        sheets overlap, the one named first keeps the place.
+        "unstructured": all sheets together by gmsh, so that any contact and overlap becomes a common edge.
+        Where sheets overlap, the one named first keeps the place.
 
     Raises
     ------
@@ -140,7 +140,7 @@ def _refuse_huge(sheets: Sequence[_FlatSheet], legs: Sequence[Leg], files: Seque
     count += sum(leg.length / leg.size for leg in legs)
     if count > MOST_UNKNOWNS:
         raise InputError(
-            f"the mesh would have about {count:.0f} unknowns, whose matrix takes {count**2 * 16 / 1e9:.3g} GB.",
+            f"the mesh would have about {count:.0f} unknowns: a matrix of {count**2 * 16 / 1e9:.3g} GB.",
             where="[mesh], key 'element_size'",
             allowed=f"up to {MOST_UNKNOWNS} unknowns ({MOST_UNKNOWNS**2 * 16 / 1e9:.3g} GB)",
             hint=f"An element size {np.sqrt(count / MOST_UNKNOWNS):.2g} times as large would do.",

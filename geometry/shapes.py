@@ -1,4 +1,4 @@
-"""Flat shapes by their frames: where a strip, plate, disc or polygon lies, and whether it is a shape at all."""
+"""Flat shapes by their frames: where a strip, plate, disc or polygon lies, and whether it is one at all."""
 
 from __future__ import annotations
 
@@ -66,7 +66,7 @@ def _frame(conductor: Conductor, normal: Floats, axis: Floats) -> Floats:
 
 
 def any_axis(normal: Floats) -> Floats:
-    """Some unit vector perpendicular to `normal`: x or, where that is close to the normal, y, made perpendicular."""
+    """Some unit vector perpendicular to `normal`: x made so or, where x is close to the normal, y."""
     n = np.asarray(normal, dtype=float) / np.linalg.norm(normal)
     start = np.array([1.0, 0.0, 0.0]) if abs(n[0]) < 0.9 else np.array([0.0, 1.0, 0.0])
     u = start - (start @ n) * n

@@ -29,8 +29,8 @@ def fill_intervals(cuts: Floats, counts: Ints) -> Floats:
 def grid_triangles(nu: int, nv: int) -> Ints:
     """Triangles of an nu x nv grid of cells, point (i, j) at index ``i (nv + 1) + j``.
 
-    Diagonals alternate like a Union Jack, so that the mesh is its own mirror image in a direction with an even
-    number of cells.
+    Diagonals alternate like a Union Jack, so that the mesh is its own mirror image in a direction with an
+    even number of cells.
     """
     i, j = (x.ravel() for x in np.meshgrid(np.arange(nu), np.arange(nv), indexing="ij"))
     p00, p01 = i * (nv + 1) + j, i * (nv + 1) + j + 1
@@ -84,7 +84,8 @@ def disc_mesh(radius: float, inner_radius: float, size: float) -> tuple[Floats, 
     """Disc or ring about the origin by concentric rings of points, each count a multiple of eight.
 
     The rims are regular polygons of the same area as the circles they stand for, so the area of the mesh is
-    exact; their corners lie outside the circle by the factor ``sqrt(t / sin t)``, t = 2 pi / n (n = 32: 0.3 %).
+    exact; their corners lie outside the circle by the factor ``sqrt(t / sin t)``, t = 2 pi / n (n = 32:
+    0.3 %).
     The mesh has the symmetry of the square.
     """
     rings = max(1, int(np.ceil(0.88 * (radius - inner_radius) / size - 1e-6)))
@@ -101,7 +102,7 @@ def disc_mesh(radius: float, inner_radius: float, size: float) -> tuple[Floats, 
         points.append(r * np.stack([np.cos(angle), np.sin(angle)], axis=1))
     for inside, outside in pairwise(counts):
         next_first = first + max(inside, 1)
-        triangles += _ring_triangles(first, int(inside), next_first, int(outside))
+        triangles += _ring_triangles(int(first), int(inside), int(next_first), int(outside))
         first = next_first
     return np.concatenate(points), np.array(triangles, dtype=np.int64)
 

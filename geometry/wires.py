@@ -1,4 +1,4 @@
-"""Wires as chains of segments: where they meet each other and sheets, and how each straight leg is divided."""
+"""Wires as chains of segments: where they meet each other and sheets, and how each leg is divided."""
 
 from __future__ import annotations
 
@@ -22,7 +22,7 @@ STEEPEST_FOLD = np.cos(np.radians(15.0))
 
 @dataclass
 class Leg:
-    """One straight leg of a wire. `nodes`: distances from `start` at which a node must sit; `wishes`: may sit."""
+    """One straight leg of a wire; `nodes` and `wishes`: where on it (m) nodes must and should be."""
 
     wire: Wire
     index: int
@@ -72,7 +72,7 @@ def _check_over_ground(wire: Wire, points: Floats) -> None:
     floating = (z > 0) & (z < wire.radius)
     if floating.any():
         raise InputError(
-            f"a point at z = {z[floating][0]:.4g} m is less than one radius ({wire.radius:.4g} m) above the ground.",
+            f"a point at z = {z[floating][0]:.4g} m is less than a radius ({wire.radius:.4g} m) above it.",
             where=place_of(wire, "points"),
             allowed="z = 0 (connected to the ground) or at least one radius",
         )
@@ -81,7 +81,7 @@ def _check_over_ground(wire: Wire, points: Floats) -> None:
     touches = (z[:-1] == 0) | (z[1:] == 0)
     if (touches & (rise < 0.5)).any():
         raise InputError(
-            "a leg lies on the ground, or leaves it at less than 30 degrees, so that the wire overlaps the ground.",
+            "a leg lies on the ground, or leaves it at less than 30 degrees and overlaps it.",
             where=place_of(wire, "points"),
         )
 
@@ -140,7 +140,7 @@ def _refuse_fold(one: Leg, two: Leg, t1: float, t2: float, moved: bool) -> None:
 def attach_to_sheets(
     legs: Sequence[Leg], regions: Sequence[Region], shifts: Floats, tolerance: float
 ) -> list[list[Floats]]:
-    """Put a node wherever a leg ends on or pierces a sheet (or its copy); returns those points for each sheet."""
+    """Put a node wherever a leg ends on or pierces a sheet (or its copy); returns these points by sheet."""
     found: list[list[Floats]] = [[] for _ in regions]
     for leg in legs:
         for region, points in zip(regions, found, strict=True):
@@ -163,7 +163,7 @@ def _plane_crossings(height: Floats, tolerance: float) -> list[float]:
 
 
 def place_gaps(legs: Sequence[Leg], gaps: Sequence[Gap], tolerance: float) -> None:
-    """Wish for a node at the centre of each wire gap; raises InputError unless its box lies within one leg."""
+    """Wish for a node at the centre of each wire gap; InputError unless its box lies within one leg."""
     for gap in (g for g in gaps if g.kind == "wire"):
         where = f"gap at {np.asarray(gap.centre).tolist()} m"
         if not legs:
@@ -176,10 +176,10 @@ def place_gaps(legs: Sequence[Leg], gaps: Sequence[Gap], tolerance: float) -> No
         near = int(np.argmin(miss))
         if miss[near] > max(0.5 * legs[near].wire.radius, tolerance):
             raise InputError(
-                f"the gap's centre lies on no wire; {legs[near].label} is the nearest, {miss[near]:.4g} m away.",
+                f"the gap's centre lies on no wire, but {miss[near]:.4g} m off {legs[near].label}.",
                 where=where,
             )
-        on_axis = np.flatnonzero(miss <= max(0.5 * legs[near].wire.radius, tolerance))
+        on_axis = np.flatnonzero(miss <= max(0.5 * legs[near].wire.radius, tolerance)).tolist()
         aligned = [
             n
             for n in on_axis
@@ -211,7 +211,7 @@ def place_gaps(legs: Sequence[Leg], gaps: Sequence[Gap], tolerance: float) -> No
 
 
 def divide_leg(leg: Leg, tolerance: float) -> Floats:
-    """Distances of all nodes along a leg, from 0 to its length: segments of about `size`, none below two radii."""
+    """Distances of all nodes along a leg, 0 to its length: segments of about `size`, none below two radii."""
     shortest = 2 * leg.wire.radius
     fixed = np.unique(np.clip([0.0, leg.length, *leg.nodes], 0, leg.length))
     fixed = fixed[np.concatenate([[True], np.diff(fixed) > tolerance])]
