@@ -38,7 +38,7 @@ def scan_maps(result: Result) -> Drawing | None:
         short = (decibel(result.response.ceiling) - result.co_cross_gain[0]).max(axis=0)
     limits = [limit.value for limit in result.job.limits if limit.quantity == "reflection"]
     with style():
-        figure = canvas(WIDTH, 3.6)
+        figure = canvas(WIDTH, 3.2)
         left, right = figure.subplots(1, 2)
         low = max(-30.0, float(np.nanmin(level)))
         _map(
@@ -167,7 +167,7 @@ def reflection_chart(result: Result) -> Drawing:
 def _scan_panel(axis: Any, result: Result, port: int, base: str) -> None:
     f, plan = len(result.job.frequency) // 2, result.job.scan
     chart_grid(axis)
-    axis.set_title(f"Scan at {gigahertz(result.job.frequency[f])} ({base})")
+    _chart_title(axis, f"Scan at {gigahertz(result.job.frequency[f])} ({base})")
     for (phi, index), theta, colour in zip(plan.planes[:6], plan.plane_theta[:6], HUES, strict=False):
         ahead = index[theta >= -1e-9]
         trace = result.response.reflection[f, ahead, port]
@@ -183,7 +183,7 @@ def _band_panel(axis: Any, result: Result, port: int, base: str) -> None:
     nearest = int(np.argmin(np.hypot(scan.u, scan.v)))
     trace = result.response.reflection[:, nearest, port]
     chart_grid(axis)
-    axis.set_title(f"Band at θ = {arc(float(scan.theta[nearest]))} ({base})")
+    _chart_title(axis, f"Band at θ = {arc(float(scan.theta[nearest]))} ({base})")
     axis.plot(trace.real, trace.imag, color=MUTED, linewidth=1)
     for value, colour in zip(trace, shades(len(trace)), strict=True):
         axis.plot(value.real, value.imag, "o", color=colour, markersize=3)
@@ -220,8 +220,13 @@ def chart_grid(axis: Any) -> None:
                 ha="center", va="center",
             )  # fmt: skip
     axis.plot([-1, 1], [0, 0], color=FAINT, linewidth=0.7)
-    axis.set(xlim=(-1.2, 1.2), ylim=(-1.2, 1.2), aspect="equal")
+    axis.set(xlim=(-1.2, 1.2), ylim=(-1.2, 1.42), aspect="equal")
     axis.axis("off")
+
+
+def _chart_title(axis: Any, text: str) -> None:
+    """A title inside the axes: with the frame off, the layout leaves no room for one above."""
+    axis.text(-1.15, 1.3, text, fontsize=9, fontweight="bold")
 
 
 def _gamma(z: Any) -> Any:

@@ -109,10 +109,12 @@ def cross_polar_cuts(result: Result) -> Drawing | None:
         shown = level[np.ix_(chosen, _plane_points(result))]
         high = float(np.nanmax(shown))
         low = max(float(np.nanmin(shown)), min(high, -20.0) - 40)
-        axes[0, 0].set_ylim(low - 2, max(high, low + 20) + 2)
-        _lines(result, axes[0], np.maximum(level, low), chosen, _bounds(result, "cross_polar", None))
+        bounds = _bounds(result, "cross_polar", None)
+        top = max([high, low + 20, *(value for value, _ in bounds)])
+        axes[0, 0].set_ylim(low - 2, top + 3)
+        _lines(result, axes[0], np.maximum(level, low), chosen, bounds)
         if high <= -79.9:
-            _note(axes[0, 0], "below -80 dB everywhere in the cuts")
+            _note(axes[0, 0], "below -80 dB everywhere in the cuts", 0.15)
         data = render(figure)
     meaning = "circular" if result.job.co_polar in ("left", "right") else "Ludwig's third definition"
     return Drawing(
@@ -169,7 +171,7 @@ def band(result: Result) -> Drawing | None:
                 continue
             worst = np.maximum(level[:, inside].max(axis=1), FLOOR)
             axis.plot(result.job.frequency / 1e9, worst, color=colour, linestyle=DASHES[drawn % 2])
-            ends.append((worst[-1], "broadside" if cone < 0.01 else f"within {arc(cone)}", colour))
+            ends.append((float(worst[-1]), "broadside" if cone < 0.01 else f"within {arc(cone)}", colour))
             drawn += 1
         axis.set_xlim(result.job.frequency[0] / 1e9, result.job.frequency[-1] / 1e9)
         axis.set_ylim(max(FLOOR, axis.get_ylim()[0]), max(0.0, axis.get_ylim()[1]) + 0.5)
@@ -202,7 +204,7 @@ def _lines(result: Result, row: Any, values: Floats, chosen: Any, bounds: list[t
     last = result.job.scan.planes[len(row) - 1][1]
     if len(last):
         ends = [
-            (values[f, last[-1]], gigahertz(result.job.frequency[f]), colour)
+            (float(values[f, last[-1]]), gigahertz(float(result.job.frequency[f])), colour)
             for f, colour in zip(chosen, colours, strict=True)
         ]
         label_ends(row[-1], ends)
@@ -237,5 +239,5 @@ def _budget(result: Result) -> list[tuple[str, Floats, str]]:
     return [share for share in shares if share[1].max() > 1e-4]
 
 
-def _note(axis: Any, text: str) -> None:
-    axis.annotate(text, (0.03, 0.03), xycoords="axes fraction", color=MUTED, fontsize=7.5)
+def _note(axis: Any, text: str, height: float = 0.04) -> None:
+    axis.annotate(text, (0.03, height), xycoords="axes fraction", color=MUTED, fontsize=7.5)

@@ -74,7 +74,7 @@ def style() -> Iterator[None]:
     """matplotlib settings of this program, for the time of one figure."""
     import matplotlib
 
-    with matplotlib.rc_context(STYLE):
+    with matplotlib.rc_context(STYLE):  # type: ignore[arg-type]
         yield
 
 
@@ -160,7 +160,7 @@ def label_ends(axes: Axes, entries: Sequence[tuple[float, str, Any]], size: floa
     if not entries:
         return
     low, high = axes.get_ylim()
-    figure = axes.get_figure()
+    figure = axes.get_figure(root=True)
     assert figure is not None
     inches = axes.get_position().height * figure.get_size_inches()[1]
     step = (size * 1.25 / 72) / max(inches, 0.5)
@@ -196,9 +196,13 @@ def _start(group: list[float]) -> float:
 
 
 def limit_line(axes: Axes, value: float, text: str) -> None:
-    """A horizontal limit with its words on the line."""
+    """A horizontal limit with its words on the line; nothing when it lies outside the axes."""
+    low, high = axes.get_ylim()
+    if not low <= value <= high:
+        return
     axes.axhline(value, color=ALARM, linewidth=1.0, linestyle=(0, (5, 2)), zorder=3)
     axes.annotate(
         text, (0.01, value), xycoords=("axes fraction", "data"), xytext=(0, 2), textcoords="offset points",
         color=ALARM, fontsize=7.5, va="bottom", ha="left",
+        bbox={"facecolor": "white", "edgecolor": "none", "alpha": 0.75, "pad": 0.6},
     )  # fmt: skip
