@@ -83,7 +83,8 @@ class Verdict:
         if not np.isfinite(self.theta):
             return ""
         port = f", port {self.port}" if self.port else ""
-        return f"theta {degrees(self.theta)}, phi {degrees(self.phi)}, {self.frequency / 1e9:.6g} GHz{port}"
+        angles = f"theta {degrees(self.theta)}, phi {degrees(self.phi % (2 * np.pi))}"
+        return f"{angles}, {self.frequency / 1e9:.6g} GHz{port}"
 
 
 def level(quantity: str, response: Response, scan: ScanPoints, co_polar: str, angle: float) -> Floats:
