@@ -1,8 +1,9 @@
 """The far part of the operator: a sum over Floquet waves of transforms of the basis functions.
 
-The smooth far kernel depends on the heights of source and observer. It is carried by a few *levels*: the heights
-themselves where the cloud has only a few (planar conductors), Chebyshev heights with barycentric interpolation
-otherwise. The matrix is ``G^H D G`` with G the transforms by level and D small matrices between levels.
+The smooth far kernel depends on the heights of source and observer. Points are carried by *layers*: one exact level
+for all horizontal conductors at one height, and one layer of Chebyshev levels with barycentric interpolation for
+everything else (vertical and tilted conductors). The matrix is the sum over pairs of layers of ``G^H D G``, G the
+transforms by level, D small matrices between levels.
 """
 
 from __future__ import annotations
@@ -21,46 +22,73 @@ Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 Ints = NDArray[np.int64]
 
-MAX_EXACT_LEVELS = 5
+MAX_EXACT_LEVELS = 6
 IMAGE_SIGN = (-1.0, -1.0, 1.0, -1.0)  # x, y, z current and charge in the ground's mirror
 
 
 @dataclass(frozen=True)
-class Levels:
-    """Heights (n_level,) and the weight of each on every cloud point, (n_q, n_level)."""
+class Layer:
+    """Heights (n_level,) that carry some of the cloud's points, and the weight of each on every point (n_q, n_level)."""
 
     heights: Floats
-    weights: Floats
-
-    @property
-    def exact(self) -> bool:
-        """Whether every point sits on a level."""
-        return bool(((self.weights == 0) | (self.weights == 1)).all())
+    weights: sparse.csr_matrix
 
 
-def choose_levels(z: Floats, split: Split, tolerance: float) -> Levels:
-    """Levels that carry the far kernel between all points to the tolerance.
+def choose_layers(cloud: Cloud, split: Split, tolerance: float) -> list[Layer]:
+    """Exact layers for horizontal elements, one Chebyshev layer for the rest.
 
-    The kernel varies with z like ``erfc(z E)`` and ``exp(-z^2 E^2)``; on an interval of half-width H the Chebyshev
-    coefficients of ``exp(-z^2 E^2)`` fall like ``exp(-(H E)^2/2) I_(n/2)((H E)^2/2)``. n is the first order at which
-    interpolating ``exp(-(z - z')^2 E^2)`` between all heights meets the tolerance (tested on a fine grid).
+    The kernel varies with z like ``exp(-z^2 E^2)``; the number of Chebyshev levels is the first at which interpolating
+    ``exp(-(z - z')^2 E^2)`` between all heights meets the tolerance (tested on a fine grid).
     """
-    distinct = np.sort(z)
-    distinct = distinct[np.concatenate([[True], np.diff(distinct) > 1e-9 / split.splitting])]
-    if len(distinct) <= MAX_EXACT_LEVELS:
-        index = np.abs(z[:, None] - distinct).argmin(axis=1)
-        return Levels(distinct, np.eye(len(distinct))[index])
+    z = cloud.points[:, 2]
+    flat = _horizontal(cloud)
+    heights = _distinct(z[flat], 1e-9 / split.splitting)
+    if len(heights) > MAX_EXACT_LEVELS:
+        flat, heights = np.zeros_like(flat), heights[:0]
+    layers = [
+        Layer(np.array([h]), sparse.csr_matrix((flat & (np.abs(z - h) <= 2e-9 / split.splitting)).astype(float)[:, None]))
+        for h in heights
+    ]
+    if not flat.all():
+        levels = _chebyshev_levels(z[~flat], split, tolerance)
+        weights = np.zeros((len(z), len(levels)))
+        weights[~flat] = _barycentric_weights(levels, z[~flat])
+        layers.append(Layer(levels, sparse.csr_matrix(weights)))
+    return layers
+
+
+def _horizontal(cloud: Cloud) -> NDArray[np.bool_]:
+    """Points of elements that lie at one height."""
+    n = int(cloud.element.max()) + 1
+    low, high = np.full(n, np.inf), np.full(n, -np.inf)
+    np.minimum.at(low, cloud.element, cloud.points[:, 2])
+    np.maximum.at(high, cloud.element, cloud.points[:, 2])
+    size = float(np.ptp(cloud.points, axis=0).max())
+    return (high - low < 1e-10 * size)[cloud.element]
+
+
+def tall_fraction(cloud: Cloud) -> float:
+    """Share of the points on vertical or tilted conductors, which need Chebyshev levels."""
+    return 1.0 - float(_horizontal(cloud).mean())
+
+
+def _distinct(z: Floats, tolerance: float) -> Floats:
+    z = np.sort(z)
+    return z[np.concatenate([[True], np.diff(z) > tolerance])] if len(z) else z
+
+
+def _chebyshev_levels(z: Floats, split: Split, tolerance: float) -> Floats:
     low, high = float(z.min()), float(z.max())
     fine = np.linspace(low, high, 101)
-    n = 4
+    exact = np.exp(-(((fine[:, None] - fine) * split.splitting) ** 2))
+    n = 3
     while True:
-        heights = _chebyshev(low, high, n)
-        weights = _barycentric_weights(heights, fine)
-        exact = np.exp(-(((fine[:, None] - fine) * split.splitting) ** 2))
-        nodes = np.exp(-(((heights[:, None] - heights) * split.splitting) ** 2))
-        if np.abs(weights @ nodes @ weights.T - exact).max() < 0.1 * tolerance or n >= 60:
-            return Levels(heights, _barycentric_weights(heights, z))
-        n += 2
+        levels = _chebyshev(low, high, n)
+        weights = _barycentric_weights(levels, fine)
+        nodes = np.exp(-(((levels[:, None] - levels) * split.splitting) ** 2))
+        if np.abs(weights @ nodes @ weights.T - exact).max() < 0.1 * tolerance or n >= 80:
+            return levels
+        n += 1
 
 
 def _chebyshev(low: float, high: float, n: int) -> Floats:
@@ -80,62 +108,85 @@ def _barycentric_weights(nodes: Floats, z: Floats) -> Floats:
     return weights
 
 
+class _Transform:
+    """One component of one layer: which functions it has, and their weights on the points."""
+
+    def __init__(self, component: sparse.csr_matrix, layer: Layer):
+        self.columns = np.flatnonzero(np.asarray(abs(layer.weights).sum(axis=1).T @ abs(component)).ravel())
+        n_level = len(layer.heights)
+        picked = component[:, self.columns]
+        self.stacked = sparse.csr_matrix(
+            sparse.vstack([picked.multiply(layer.weights[:, [level]]).T for level in range(n_level)])
+        )
+        self.n_level = n_level
+
+    def __call__(self, phase: Complexes) -> Complexes:
+        """(n_mode, n_level, n_columns) from the phases (n_q, n_mode)."""
+        result = (self.stacked @ phase).reshape(self.n_level, len(self.columns), -1)
+        return np.ascontiguousarray(result.transpose(2, 0, 1))
+
+
 class FarPart:
     """Evaluates the far part at any (k, kt), with everything that depends on the mesh alone kept."""
 
-    def __init__(self, cloud: Cloud, lattice: Lattice, split: Split, tolerance: float, ground: bool, k_max: float):
+    def __init__(self, cloud: Cloud, lattice: Lattice, split: Split, tolerance: float, ground: bool):
         self.lattice, self.split, self.ground = lattice, split, ground
+        self.n = cloud.charge.shape[1]
         self.points = cloud.points
-        self.levels = choose_levels(cloud.points[:, 2], split, tolerance)
+        self.layers = choose_layers(cloud, split, tolerance)
         components = [*cloud.current, cloud.charge]
-        self.used = [c for c in range(4) if components[c].nnz]
-        n_level = len(self.levels.heights)
-        self.weights = [
-            sparse.csr_matrix(components[c].multiply(self.levels.weights[:, [level]]).T)
-            for c in self.used
-            for level in range(n_level)
+        self.transforms = [
+            [_Transform(component, layer) if component.nnz else None for component in components]
+            for layer in self.layers
         ]
-        self.stacked = sparse.csr_matrix(sparse.vstack(self.weights))
         self._phases = _PhaseTable(cloud.points[:, :2], lattice)
+
+    @property
+    def n_level(self) -> int:
+        """Levels in all layers."""
+        return sum(len(layer.heights) for layer in self.layers)
 
     def orders(self, k: float, kt: Floats) -> Ints:
         """Floquet orders that matter at (k, kt), shape (n_mode, 2)."""
         return self.lattice.orders_within(float(np.hypot(self.split.far_radius, k)), kt)
 
-    def transforms(self, orders: Ints, kt: Floats) -> Complexes:
-        """``int f exp(+j k_pq . rho)`` by component and level, (n_component, n_level, n, n_mode)."""
-        phase = np.exp(1j * (self.points[:, :2] @ kt))[:, None] * self._phases(orders)
-        n_level = len(self.levels.heights)
-        result = self.stacked @ phase
-        return result.reshape(len(self.used), n_level, -1, len(orders))
-
     def matrix(self, k: float, kt: Floats, current_scale: complex, charge_scale: complex) -> Complexes:
         """``current_scale A_far + charge_scale Q_far``, (n, n)."""
         orders = self.orders(k, kt)
-        transforms = self.transforms(orders, kt)
-        direct, image = self.level_kernels(k, kt, orders)
-        n_component, n_level, n, n_mode = transforms.shape
-        weighted = np.empty_like(transforms)
-        for i, c in enumerate(self.used):
-            kernel = direct + IMAGE_SIGN[c] * image if self.ground else direct
-            scale = charge_scale if c == 3 else current_scale
-            if n_level == 1:
-                np.multiply(transforms[i, 0], scale * kernel[:, 0, 0], out=weighted[i, 0])
-            else:
-                weighted[i] = np.einsum("mab,bnm->anm", scale * kernel, transforms[i], optimize=True)
-        left = transforms.transpose(0, 1, 3, 2).reshape(-1, n)
-        right = weighted.transpose(0, 1, 3, 2).reshape(-1, n)
-        return left.conj().T @ right
+        phase = np.exp(1j * (self.points[:, :2] @ kt))[:, None] * self._phases(orders)
+        fields = [[t(phase) if t and len(t.columns) else None for t in layer] for layer in self.transforms]
+        square = (self.lattice.harmonics(orders, kt) ** 2).sum(axis=1)
+        matrix = np.zeros((self.n, self.n), dtype=complex)
+        for a, one in enumerate(self.layers):
+            for b, other in enumerate(self.layers):
+                direct, image = self.level_kernels(k, square, one.heights, other.heights)
+                parts: dict[bytes, list] = {}
+                for c in range(4):
+                    left, right = fields[a][c], fields[b][c]
+                    if left is None or right is None:
+                        continue
+                    kernel = direct + IMAGE_SIGN[c] * image if self.ground else direct
+                    weighted = ((charge_scale if c == 3 else current_scale) * kernel) @ right
+                    rows, columns = self.transforms[a][c].columns, self.transforms[b][c].columns
+                    key = rows.tobytes() + b"|" + columns.tobytes()
+                    parts.setdefault(key, [rows, columns, [], []])
+                    parts[key][2].append(left.reshape(-1, len(rows)))
+                    parts[key][3].append(weighted.reshape(-1, len(columns)))
+                for rows, columns, lefts, rights in parts.values():
+                    product = np.concatenate(lefts).conj().T @ np.concatenate(rights)
+                    if product.shape == matrix.shape:
+                        matrix += product
+                    else:
+                        matrix[np.ix_(rows, columns)] += product
+        return matrix
 
-    def level_kernels(self, k: float, kt: Floats, orders: Ints) -> tuple[Complexes, Complexes]:
+    def level_kernels(self, k: float, square: Floats, z: Floats, other: Floats) -> tuple[Complexes, Complexes]:
         """D between levels, direct and through the ground, each (n_mode, n_level, n_level)."""
-        waves = self.lattice.harmonics(orders, kt)
-        square = (waves**2).sum(axis=1)[:, None, None]
-        h = self.levels.heights
-        direct = far_kernel(k, square, h[:, None] - h, self.split, self.lattice.area)
+        square = square[:, None, None]
+        direct = far_kernel(k, square, z[:, None] - other, self.split, self.lattice.area)
         if not self.ground:
             return direct, direct
-        return direct, far_kernel(k, square, h[:, None] + h, self.split, self.lattice.area)
+        return direct, far_kernel(k, square, z[:, None] + other, self.split, self.lattice.area)
 
 
 class _PhaseTable:

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import sparse
 
 from ..geometry.lattice import Lattice
 from .basis import Basis
@@ -17,7 +18,7 @@ from .pairs import MIRROR, half_cells
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-ROW_BLOCK = 384
+TILE = 192  # observers handled at a time, chosen close together
 
 
 @dataclass(frozen=True)
@@ -39,110 +40,106 @@ def build_near(basis: Basis, cloud: Cloud, lattice: Lattice, split: Split, groun
     corrections = build_corrections(basis, lattice, ground)
     extent = np.linalg.norm(np.ptp(cloud.points[:, :2], axis=0))
     cells = {tuple(map(int, m)) for m in half_cells(lattice, split.near_radius + extent)} | set(corrections)
+    tiles = _tiles(cloud.points, np.arange(len(cloud.points)))
     blocks = []
     for cell in sorted(cells, key=lambda m: (m != (0, 0), m)):
-        block = _build_block(basis, cloud, lattice, split, ground, cell, corrections.get(cell))
-        if block is not None:
+        shift = np.append(lattice.positions(np.array([cell]))[0], 0.0)
+        current, charge = _point_sums(cloud, tiles, shift, split, ground)
+        for part, matrices in zip((current, charge), corrections.get(cell, ((), ())), strict=True):
+            for p, matrix in enumerate(matrices):
+                rows, columns = matrix.nonzero()
+                part[p][rows, columns] += np.asarray(matrix[rows, columns]).ravel()
+        if block := _compressed(cell, current, charge):
             blocks.append(block)
     return blocks
 
 
-def _build_block(basis, cloud, lattice, split, ground, cell, correction) -> NearBlock | None:  # noqa: ANN001
-    shift = np.append(lattice.positions(np.array([cell]))[0], 0.0)
-    sources = cloud.points + shift
-    rows_q, columns_q = _coupled_points(cloud.points, sources, split.near_radius, ground)
-    near_rows = _functions_at(cloud, rows_q)
-    near_columns = _functions_at(cloud, columns_q)
-    if correction is not None:
-        touched = sum(abs(m) for part in correction for m in part)
-        near_rows = np.union1d(near_rows, np.flatnonzero(np.diff(touched.tocsr().indptr)))
-        near_columns = np.union1d(near_columns, np.flatnonzero(np.diff(touched.tocsc().indptr)))
-    if not len(near_rows) or not len(near_columns):
+def _compressed(cell: Cell, current: Floats, charge: Floats) -> NearBlock | None:
+    """Keep the rows and columns that are not zero, or nothing."""
+    rows = np.flatnonzero((current[0] != 0).any(axis=1) | (charge[0] != 0).any(axis=1))
+    columns = np.flatnonzero((current[0] != 0).any(axis=0) | (charge[0] != 0).any(axis=0))
+    if not len(rows):
         return None
-    if cell == (0, 0):
-        near_rows = near_columns = np.arange(basis.n)
-        rows_q = columns_q = np.arange(len(cloud.points))
-    current, charge = _point_sums(
-        cloud, (rows_q, columns_q), sources, (near_rows, near_columns), split, ground, cell == (0, 0)
-    )
-    if correction is not None:
-        for part, matrices in zip((current, charge), correction, strict=True):
-            for p, matrix in enumerate(matrices):
-                part[p] += matrix[near_rows][:, near_columns].toarray()
-    return NearBlock(cell, near_rows, near_columns, current, charge)
+    if len(rows) * len(columns) < 0.8 * current[0].size:
+        pick = np.ix_(np.arange(len(current)), rows, columns)
+        current, charge = current[pick], charge[pick]
+    else:
+        rows = columns = np.arange(current.shape[1])
+    return NearBlock(cell, rows, columns, current, charge)
 
 
-def _coupled_points(points: Floats, sources: Floats, radius: float, ground: bool) -> tuple[Ints, Ints]:
-    """Indices of points with a source, and sources with a point, within reach (ground images included)."""
-    low, high = points.min(axis=0) - radius, points.max(axis=0) + radius
-
-    def inside(p: Floats, low: Floats, high: Floats) -> Ints:
-        axes = slice(0, 2) if ground else slice(0, 3)
-        return np.flatnonzero(((p >= low) & (p <= high))[:, axes].all(axis=1))
-
-    columns = inside(sources, low, high)
-    if not len(columns):
-        return np.arange(0), columns
-    reach = sources[columns]
-    return inside(points, reach.min(axis=0) - radius, reach.max(axis=0) + radius), columns
+def _tiles(points: Floats, index: Ints) -> list[Ints]:
+    """Split points into compact groups of at most TILE by halving the longest side."""
+    if len(index) <= TILE:
+        return [index]
+    axis = int(np.argmax(np.ptp(points[index], axis=0)))
+    order = index[np.argsort(points[index, axis], kind="stable")]
+    half = len(order) // 2
+    return _tiles(points, order[:half]) + _tiles(points, order[half:])
 
 
-def _functions_at(cloud: Cloud, points: Ints) -> Ints:
-    """Functions with weight at any of the given points."""
-    if not len(points):
-        return np.arange(0)
-    used = abs(cloud.charge[points]).sum(axis=0) + sum(abs(c[points]).sum(axis=0) for c in cloud.current)
-    return np.flatnonzero(np.asarray(used).ravel())
+def _point_sums(
+    cloud: Cloud, tiles: list[Ints], shift: Floats, split: Split, ground: bool
+) -> tuple[Floats, Floats]:
+    """``B^T K_p B`` of the currents and charges with the sources displaced, each (powers, n, n).
 
-
-def _point_sums(cloud, points, sources, functions, split, ground, symmetric) -> tuple[Floats, Floats]:  # noqa: ANN001
-    """``B^T K_p B`` for the currents and charges, over blocks of rows of the kernel."""
-    rows_q, columns_q = points
-    rows, columns = functions
-    left = [m[rows_q][:, rows].T.tocsr() for m in (*cloud.current, cloud.charge)]
-    right = [m[columns_q][:, columns].T.tocsr() for m in (*cloud.current, cloud.charge)]
-    used = [bool(a.nnz and b.nnz) for a, b in zip(left, right, strict=True)]
-    current = np.zeros((split.powers, len(rows), len(columns)))
-    charge = np.zeros_like(current)
-    for start in range(0, len(rows_q), ROW_BLOCK):
-        part = slice(start, start + ROW_BLOCK)
-        observers = cloud.points[rows_q[part]]
-        first = start if symmetric else 0  # kernels below the diagonal block follow from symmetry
-        direct, image = _kernel_rows(observers, sources[columns_q[first:]], split, ground)
-        for p in range(split.powers):
-            horizontal = direct[p] - image[p] if ground else direct[p]
-            vertical = direct[p] + image[p] if ground else direct[p]
-            if symmetric:  # halve the diagonal block, the transpose adds the other half
-                size = horizontal.shape[0]
-                horizontal[:, :size] *= 0.5
-                if ground:
-                    vertical[:, :size] *= 0.5
-            for c, target, kernel in ((0, current, horizontal), (1, current, horizontal), (2, current, vertical), (3, charge, horizontal)):
-                if used[c]:
-                    inner = right[c][:, first:] @ kernel.T  # (columns, block)
-                    target[p] += left[c][:, part] @ inner.T
+    Without displacement the kernel is symmetric: only tiles at or after the observers' own are visited.
+    """
+    n = cloud.charge.shape[1]
+    symmetric = not shift.any()
+    # (observing function, power, source function) while summing: adding a tile then touches whole rows
+    current, charge = np.zeros((n, split.powers, n)), np.zeros((n, split.powers, n))
+    weights = [m.T.tocsr() for m in (*cloud.current, cloud.charge)]
+    boxes = np.array([[cloud.points[t].min(axis=0), cloud.points[t].max(axis=0)] for t in tiles])
+    for i, tile in enumerate(tiles):
+        gap = np.maximum(boxes[:, 0] + shift - boxes[i, 1], boxes[i, 0] - boxes[:, 1] - shift).clip(min=0)
+        if ground:
+            gap[:, 2] = 0.0
+        near = [j for j in np.flatnonzero((gap**2).sum(axis=1) < split.near_radius**2) if j >= i or not symmetric]
+        if not near:
+            continue
+        sources = np.concatenate([tiles[j] for j in near])
+        own = len(tile) if symmetric else 0  # the tile with itself comes first and is halved
+        kernels = _kernels(cloud.points[tile], cloud.points[sources] + shift, split, ground, own)
+        _add_tile(weights, tile, sources, kernels, current, charge)
+    result = tuple(np.ascontiguousarray(part.transpose(1, 0, 2)) for part in (current, charge))
     if symmetric:
-        current += current.transpose(0, 2, 1).copy()
-        charge += charge.transpose(0, 2, 1).copy()
-    return current, charge
+        for part in result:
+            for matrix in part:
+                matrix += matrix.T.copy()
+    return result
 
 
-def _kernel_rows(observers: Floats, sources: Floats, split: Split, ground: bool) -> tuple[list, list]:
-    """Near kernels between points, direct and in the ground's mirror; zero beyond the near radius."""
-    return (
-        _cut_kernels(observers, sources, split),
-        _cut_kernels(observers, sources * MIRROR, split) if ground else [],
-    )
+def _kernels(observers: Floats, sources: Floats, split: Split, ground: bool, own: int) -> tuple[Floats, Floats]:
+    """Near kernels (n_source, powers, n_observer) for horizontal currents and charges, and for vertical currents."""
+    direct = _kernel(observers, sources, split)
+    direct[:own] *= 0.5
+    if not ground:
+        return direct, direct
+    image = _kernel(observers, sources * MIRROR, split)
+    image[:own] *= 0.5
+    return direct - image, direct + image
 
 
-def _cut_kernels(observers: Floats, sources: Floats, split: Split) -> list[Floats]:
-    square = (observers**2).sum(axis=1)[:, None] + (sources**2).sum(axis=1) - 2 * observers @ sources.T
-    near = square < split.near_radius**2
-    kernels = [np.zeros(square.shape) for _ in range(split.powers)]
-    i, j = np.nonzero(near)
-    if len(i):
-        distance = np.sqrt(((observers[i] - sources[j]) ** 2).sum(axis=1))
-        distance[distance < 1e-9 * split.near_radius] = 0.0
-        for kernel, values in zip(kernels, near_kernels(distance, split), strict=True):
-            kernel[i, j] = values
-    return kernels
+def _kernel(observers: Floats, sources: Floats, split: Split) -> Floats:
+    square = np.zeros((len(sources), len(observers)))
+    for axis in range(3):
+        square += (sources[:, axis, None] - observers[:, axis]) ** 2
+    distance = np.sqrt(square, out=square)
+    distance[distance < 1e-9 * split.near_radius] = 0.0
+    return np.stack(near_kernels(distance, split), axis=1)
+
+
+def _add_tile(weights, tile, sources, kernels, current, charge) -> None:  # noqa: ANN001
+    """Weigh the kernels of one tile with the functions on both sides and add them to the sums."""
+    n, powers, _ = current.shape
+    for components, kernel, target in (((0, 1), kernels[0], current), ((2,), kernels[1], current), ((3,), kernels[0], charge)):
+        left = [weights[c][:, tile] for c in components]
+        rows = np.flatnonzero(sum(np.diff(m.indptr) for m in left))
+        for m, c in zip(left, components, strict=True):
+            right = weights[c][:, sources]
+            if not m.nnz or not right.nnz:
+                continue
+            inner = (right @ kernel.reshape(len(sources), -1)).reshape(n, powers, len(tile))
+            inner = np.ascontiguousarray(inner.transpose(2, 1, 0)).reshape(len(tile), -1)
+            target[rows] += (m[rows] @ inner).reshape(len(rows), powers, n)

@@ -14,7 +14,7 @@ from ..geometry.cell import UnitCell
 from .basis import build_basis
 from .cloud import build_cloud
 from .ewald import choose_split
-from .far import FarPart
+from .far import FarPart, tall_fraction
 from .near import build_near
 
 Floats = NDArray[np.float64]
@@ -40,9 +40,9 @@ class PeriodicOperator:
         self.lattice = cell.lattice.reduced
         self.basis = build_basis(cell.mesh, cell.lattice, ground=cell.ground)
         self.cloud = build_cloud(self.basis)
-        self.split = choose_split(self.lattice.area, k_max, tolerance, splitting)
+        self.split = choose_split(self.lattice.area, k_max, tolerance, splitting, tall=tall_fraction(self.cloud))
         self.near = build_near(self.basis, self.cloud, self.lattice, self.split, cell.ground)
-        self.far = FarPart(self.cloud, self.lattice, self.split, tolerance, cell.ground, k_max)
+        self.far = FarPart(self.cloud, self.lattice, self.split, tolerance, cell.ground)
         self._combined: tuple[float, list[Floats]] | None = None
 
     @property
@@ -87,5 +87,5 @@ class PeriodicOperator:
         return (
             f"PeriodicOperator({self.n} unknowns, {len(self.cloud.points)} points, E = {self.split.splitting:.4g} 1/m, "
             f"{self.split.powers} powers of k^2, {len(self.near)} near blocks of {self.near_bytes / 1e6:.0f} MB, "
-            f"{len(self.far.levels.heights)} levels)"
+            f"{self.far.n_level} levels)"
         )

@@ -1,8 +1,8 @@
 """Accurate static integrals between two triangles.
 
 Everything reduces to the 3 x 3 barycentric moments ``S_cd = int int lambda_c(r) lambda_d(r') K(R)``. Touching pairs
-use the singularity-cancelling rules of `quadrature.pair_rule` (relative error about 1e-5 at order 4, 2e-4 for a
-shared vertex), close ones the closed-form inner potential with Gauss outside, moderately near ones Gauss on both.
+use the singularity-cancelling rules of `quadrature.pair_rule` (relative error about 1e-5, 2e-4 for a shared vertex,
+the order rising with the aspect ratio), close ones the closed-form inner potential with Gauss outside, moderately near ones Gauss on both.
 """
 
 from __future__ import annotations
@@ -21,7 +21,7 @@ Floats = NDArray[np.float64]
 Kernel = Callable[[Floats], Floats]
 
 CHUNK = 200_000  # kernel evaluations at a time
-ORDER = {3: 4, 2: 4, 1: 5}
+ORDERS = ((2.5, 4), (5.0, 6), (12.0, 8), (np.inf, 12))  # Gauss order of touching pairs by aspect ratio up to
 POWERS = 2  # static powers that are singular enough to need correcting: 1/R and R
 
 
@@ -30,15 +30,19 @@ def triangle_moments(a: Floats, b: Floats) -> Floats:
     moments = np.zeros((POWERS, len(a), 3, 3))
     shared = _shared_corners(a, b)
     count = shared.any(axis=2).sum(axis=1)
+    aspect = np.maximum(_aspect(a), _aspect(b))
     for number in (3, 2, 1):
-        pick = np.flatnonzero(count == number)
-        if len(pick):
-            moments[:, pick] = _touching(a[pick], b[pick], shared[pick], number)
+        low = 0.0
+        for high, order in ORDERS:
+            pick = np.flatnonzero((count == number) & (aspect >= low) & (aspect < high))
+            if len(pick):
+                moments[:, pick] = _touching(a[pick], b[pick], shared[pick], number, order)
+            low = high
     apart = np.flatnonzero(count == 0)
     if len(apart):
         gap, size = _gap(a[apart], b[apart])
         moments[:, apart] = product_moments(a[apart], b[apart], 7)
-        for low, high, order in ((0.0, 0.25, 12), (0.25, 0.8, 6)):
+        for low, high, order in ((0.0, 0.2, 12), (0.2, 0.6, 6)):
             pick = apart[(gap >= low * size) & (gap < high * size)]
             if len(pick):
                 moments[0, pick] = _inner_closed(a[pick], b[pick], order)
@@ -74,12 +78,18 @@ def _areas(t: Floats) -> Floats:
     return 0.5 * np.linalg.norm(np.cross(t[:, 1] - t[:, 0], t[:, 2] - t[:, 0]), axis=1)
 
 
+def _aspect(t: Floats) -> Floats:
+    """Longest edge squared over twice the area: 1.15 for an equilateral triangle, 2 for half a square."""
+    edges = t - np.roll(t, 1, axis=1)
+    return (edges**2).sum(axis=2).max(axis=1) / (2 * _areas(t))
+
+
 def _shared_corners(a: Floats, b: Floats) -> NDArray[np.bool_]:
     size = np.linalg.norm(a[:, 1] - a[:, 0], axis=1)
     return end_distances(a, b) < 1e-6 * size[:, None, None]
 
 
-def _touching(a: Floats, b: Floats, shared: NDArray[np.bool_], number: int) -> Floats:
+def _touching(a: Floats, b: Floats, shared: NDArray[np.bool_], number: int, order: int) -> Floats:
     """Order the shared corners first and alike, integrate, and put the moments back in order."""
     order_a = np.argsort(~shared.any(axis=2), axis=1, kind="stable")
     partner = np.argmax(shared, axis=2)  # corner of b that meets each corner of a
@@ -87,20 +97,20 @@ def _touching(a: Floats, b: Floats, shared: NDArray[np.bool_], number: int) -> F
     if number < 3:
         order_b[:, number:] = np.argsort(~shared.any(axis=1), axis=1, kind="stable")[:, number:]
     rows = np.arange(len(a))[:, None]
-    sorted_moments = _summed(a[rows, order_a], b[rows, order_b], *quadrature.pair_rule(number, ORDER[number]))
+    sorted_moments = _summed(a[rows, order_a], b[rows, order_b], *quadrature.pair_rule(number, order))
     moments = np.empty_like(sorted_moments)
     moments[:, rows[:, :, None], order_a[:, :, None], order_b[:, None, :]] = sorted_moments
     return moments
 
 
 def _gap(a: Floats, b: Floats) -> tuple[Floats, Floats]:
-    """Smallest distance between sample points of both triangles, and the larger one's size."""
+    """Smallest distance between sample points of both triangles, and the longest edge."""
     samples = np.array(
         [[1, 0, 0], [0, 1, 0], [0, 0, 1], [0.5, 0.5, 0], [0, 0.5, 0.5], [0.5, 0, 0.5], [1 / 3, 1 / 3, 1 / 3]]
     )
     gap = end_distances(np.einsum("qa,nac->nqc", samples, a), np.einsum("qa,nac->nqc", samples, b))
-    size = np.sqrt(2 * np.maximum(_areas(a), _areas(b)))
-    return gap.min(axis=(1, 2)), size
+    size = [np.linalg.norm(t - np.roll(t, 1, axis=1), axis=2).max(axis=1) for t in (a, b)]
+    return gap.min(axis=(1, 2)), np.maximum(*size)
 
 
 def _inner_closed(a: Floats, b: Floats, n: int) -> Floats:

@@ -1,0 +1,108 @@
+"""The receive view: a plane wave from above falls on the array whose ports are terminated.
+
+By image theory and reciprocity the excitation of function i by a unit-power wave of unit vector e, bare ground included,
+is ``sqrt(eta / (S cos theta)) conj(e . J_i)`` with the same transforms (waves.radiation) that give its radiation.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from .result import FloquetWaves, ScanPoints
+from .sweep import CellSolver, absorbed, wavenumber
+from .waves import ETA, polarisation_vectors, radiation, wave_table
+
+Floats = NDArray[np.float64]
+Complexes = NDArray[np.complex128]
+
+
+@dataclass(frozen=True)
+class PlaneWaveResponse:
+    """Outgoing power waves per incident unit power wave, over (frequency, scan).
+
+    Attributes
+    ----------
+    frequency : (n_freq,) Hz; scan : n_scan directions of the incident wave's transverse wave vector ``k (u, v)``
+    waves : (n_freq, n_scan, n_wave, 2) outgoing Floquet waves for incident TM (0) and TE (1), phase reference z = 0,
+        the bare ground's reflection (or, without ground, the undisturbed wave below) included
+    table : FloquetWaves; transverse fields along k_t (TM) or phi (TE) count as positive on both sides, so that a
+        bare ground reflects -1 in both
+    received : (n_freq, n_scan, n_port, 2) power wave delivered to the terminations
+    loss : (n_freq, n_scan, n_loss, 2) power absorbed in conductors and loads
+    """
+
+    frequency: Floats
+    scan: ScanPoints
+    waves: Complexes
+    table: FloquetWaves
+    received: Complexes
+    loss: Floats
+
+
+def plane_wave_response(solver: CellSolver, frequency: Floats, scan: ScanPoints) -> PlaneWaveResponse:
+    """Reflection, transmission and reception of the cell; its ports end in their reference resistances.
+
+    Parameters
+    ----------
+    solver : CellSolver filled for at least the highest frequency; cells without ports are welcome
+    frequency : (n_freq,) Hz
+    scan : incident directions, inside visible space
+
+    Raises
+    ------
+    ValueError
+        If a direction is invisible (no plane wave can come from there).
+    """
+    if np.any(np.hypot(scan.u, scan.v) >= 1):
+        raise ValueError("plane waves come from visible directions only: u^2 + v^2 < 1")
+    frequency = np.atleast_1d(np.asarray(frequency, dtype=float))
+    cell = solver.cell
+    table = wave_table(cell.lattice, wavenumber(float(frequency.max())), scan, cell.ground)
+    shape, n_port = (len(frequency), len(scan)), len(cell.ports)
+    waves = np.zeros((*shape, len(table.side), 2), dtype=complex)
+    received = np.zeros((*shape, n_port, 2), dtype=complex)
+    loss = np.zeros((*shape, len(solver.loss_names), 2))
+    for f, hertz in enumerate(frequency):
+        for s in range(len(scan)):
+            point = _respond(solver, float(hertz), scan, s, table)
+            waves[f, s], received[f, s], loss[f, s] = point
+    return PlaneWaveResponse(frequency, scan, waves, table, received, loss)
+
+
+def _respond(
+    solver: CellSolver, hertz: float, scan: ScanPoints, s: int, table: FloquetWaves
+) -> tuple[Complexes, Complexes, Floats]:
+    cell, operator = solver.cell, solver.operator
+    k = wavenumber(hertz)
+    kt = k * np.array([scan.u[s], scan.v[s]])
+    phi = float(scan.phi[s])
+    incident = _excitation(solver, k, kt, phi)
+    ports = solver.excitations(kt)
+    currents, absorbing, _ = solver.solve(hertz, kt, np.concatenate([ports, incident], axis=1))
+    n_port = len(cell.ports)
+    driven, scattered = currents[:, :n_port], currents[:, n_port:]
+    # terminate the ports: the gap voltage is -R I, I the current there
+    admittance, short_circuit = ports.conj().T @ driven, ports.conj().T @ scattered
+    current = np.linalg.solve(np.eye(n_port) + admittance * solver.reference, short_circuit)
+    scattered = scattered - driven @ (solver.reference[:, None] * current)
+    amplitude, propagating = radiation(operator.cloud, cell.lattice, cell.ground, k, kt, phi, table)
+    out = amplitude @ scattered
+    for polarisation in (0, 1):  # what is there without the conductors
+        out[table.index((0, 0), 1 if cell.ground else -1, polarisation), polarisation] += -1.0 if cell.ground else 1.0
+    lost = np.array([np.diag(m).real for m in absorbed(absorbing, scattered)]).reshape(-1, 2)
+    return out * propagating[:, None], np.sqrt(solver.reference)[:, None] * current, lost
+
+
+def _excitation(solver: CellSolver, k: float, kt: Floats, phi: float) -> Complexes:
+    """``int f_i . E`` of unit-power TM and TE waves from above, (n, 2)."""
+    cell = solver.cell
+    down = FloquetWaves(np.zeros((2, 2), dtype=np.int64), np.full(2, -1), np.array([0, 1]))
+    amplitude, _ = radiation(solver.operator.cloud, cell.lattice, cell.ground, k, kt, phi, down)
+    # an incident wave exp(-j (kt . rho - kz z)) is the conjugate of the phase of radiation towards -kz at real kt
+    return -2 * amplitude.conj().T
+
+
+__all__ = ["ETA", "PlaneWaveResponse", "plane_wave_response", "polarisation_vectors"]
