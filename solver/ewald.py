@@ -43,7 +43,7 @@ def choose_split(
 ) -> Split:
     """Cut-offs from the tolerance.
 
-    With ``x^2 = ln(10/tolerance)`` (the margin because charge terms exceed the impedance they cancel to): near pairs end where ``exp(-R^2 E^2)`` and Floquet waves where
+    With ``x^2 = ln(1/tolerance)``: near pairs end where ``exp(-R^2 E^2)`` and Floquet waves where
     ``exp(-(k_t^2 - k^2)/(4 E^2))`` reach the tolerance, so ``R = x/E`` and ``k_t = 2 E x``; the powers end
     where ``(k/2E)^(2p) / (p! (2p-1))`` does. E defaults to c / sqrt(S), c = 5 for horizontal conductors and 3.5 where the
     share `tall` of vertical ones is large (measured: balances the cost of filling against that of each scan point; the
@@ -51,7 +51,7 @@ def choose_split(
     E would cancel catastrophically (Capolino, Wilton, Johnson, J. Comp. Phys. 223, 250, 2007).
     """
     e = splitting if splitting is not None else max((5.0 - 1.5 * min(1.0, 4 * tall)) / np.sqrt(area), k_max / 1.4)
-    x = np.sqrt(np.log(10 / tolerance))
+    x = np.sqrt(np.log(1 / tolerance))
     ratio, powers = (k_max / (2 * e)) ** 2, 2
     while ratio**powers / factorial(powers) / (2 * powers - 1) > 0.1 * tolerance:
         powers += 1
