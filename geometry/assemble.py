@@ -56,6 +56,15 @@ def merge_points(points: Floats, tolerance: float) -> tuple[Floats, Ints]:
     return points[first[order]], rank[inverse].astype(np.int64)
 
 
+def split_quads(points: Floats, quads: Ints) -> Ints:
+    """Two triangles for each quadrilateral (n, 4), cut along its shorter diagonal, (2 n, 3)."""
+    p = points[quads]
+    first = np.linalg.norm(p[:, 2] - p[:, 0], axis=1) <= np.linalg.norm(p[:, 3] - p[:, 1], axis=1)
+    a = np.where(first[:, None], quads[:, [0, 1, 2]], quads[:, [0, 1, 3]])
+    b = np.where(first[:, None], quads[:, [0, 2, 3]], quads[:, [1, 2, 3]])
+    return np.concatenate([a, b])
+
+
 def join_pieces(pieces: Sequence[Piece], conductors: Sequence[Conductor], tolerance: float) -> Mesh:
     """One mesh of all pieces, connected wherever their points coincide within `tolerance` (m)."""
     offsets = np.cumsum([0] + [len(p.points) for p in pieces])

@@ -67,7 +67,7 @@ def triangle_normals(t: Floats) -> tuple[Floats, Floats]:
 
 
 def overlap_depth(t1: Floats, t2: Floats) -> Floats:
-    """How deep triangles (n, 3, 3) reach into each other: the least overlap over all separating axes, (n,).
+    """How deep triangles (n, 3, 3) reach into each other: the least way to part them over all axes, (n,).
 
     Zero when they only touch (share a corner or an edge, or one stands on the other), negative when apart.
     """
@@ -86,7 +86,7 @@ def overlap_depth(t1: Floats, t2: Floats) -> Floats:
         good = length > 1e-6 * scale if use is not None else length > 0.5
         unit = axis / np.where(good, length, 1.0)[:, None]
         a, b = np.einsum("nij,nj->ni", t1, unit), np.einsum("nij,nj->ni", t2, unit)
-        shared = np.minimum(a.max(1), b.max(1)) - np.maximum(a.min(1), b.min(1))
+        shared = np.minimum(a.max(1) - b.min(1), b.max(1) - a.min(1))
         if use is None:
             flat = np.minimum(flat, shared)  # below zero: parallel planes apart
             depth = np.where(coplanar, depth, np.minimum(depth, shared))
@@ -98,8 +98,7 @@ def overlap_depth(t1: Floats, t2: Floats) -> Floats:
 def clip_to_triangle(p: Floats, q: Floats, t: Floats, margin: Floats) -> tuple[Floats, Floats]:
     """Part of the segments p-q that runs within `margin` (n,) of triangles t (n, 3, 3).
 
-    Returns its length (n,), zero where no part does, and the largest distance from the plane of the triangle
-    there.
+    Returns its length (n,), zero where no part does, and its middle (n, 3).
     """
     normal, _ = triangle_normals(t)
     lo, hi = np.zeros(len(p)), np.ones(len(p))
@@ -118,8 +117,7 @@ def clip_to_triangle(p: Floats, q: Floats, t: Floats, margin: Floats) -> tuple[F
         hi = np.where(slope < 0, np.minimum(hi, root), hi)
         hi = np.where((slope == 0) & (f0 < 0), -1.0, hi)
     length = np.maximum(hi - lo, 0) * np.linalg.norm(q - p, axis=1)
-    height = np.maximum(np.abs(h0 + lo * (h1 - h0)), np.abs(h0 + hi * (h1 - h0)))
-    return length, np.where(length > 0, height, np.inf)
+    return length, p + 0.5 * (lo + hi)[:, None] * (q - p)
 
 
 def point_triangle_distance(p: Floats, t: Floats) -> Floats:

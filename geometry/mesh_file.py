@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import contextlib
 import io
+import warnings
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from .assemble import merge_points
+from .assemble import merge_points, split_quads
 from .conductor import MeshFile
 from .errors import InputError
 from .shapes import place_of
@@ -40,7 +41,7 @@ def read_mesh_file(conductor: MeshFile, tolerance: float) -> tuple[Floats, Ints,
         if block.type == "triangle":
             triangles.append(data)
         elif block.type == "quad":
-            triangles.append(_split_quads(points, data))
+            triangles.append(split_quads(points, data))
         elif block.type == "line":
             lines.append(data)
         elif block.type != "vertex":
@@ -57,7 +58,8 @@ def _read(conductor: MeshFile, where: str) -> Any:
         raise InputError(f"there is no file '{conductor.path}'.", where=where)
     said = io.StringIO()
     try:
-        with contextlib.redirect_stdout(said), contextlib.redirect_stderr(said):
+        with contextlib.redirect_stdout(said), contextlib.redirect_stderr(said), warnings.catch_warnings():
+            warnings.simplefilter("ignore")  # its guesses at the kind of an STL file overflow
             return meshio.read(conductor.path)
     except (SystemExit, Exception) as fault:  # meshio lets all kinds through, and may end the process
         reason = " ".join((said.getvalue() or str(fault)).split())[:200]
@@ -66,14 +68,6 @@ def _read(conductor: MeshFile, where: str) -> Any:
             where=where,
             allowed="a mesh file whose extension tells its format, such as .msh, .vtk, .vtu, .stl",
         ) from fault
-
-
-def _split_quads(points: Floats, quads: Ints) -> Ints:
-    p = points[quads]
-    first = np.linalg.norm(p[:, 2] - p[:, 0], axis=1) <= np.linalg.norm(p[:, 3] - p[:, 1], axis=1)
-    a = np.where(first[:, None], quads[:, [0, 1, 2]], quads[:, [0, 1, 3]])
-    b = np.where(first[:, None], quads[:, [0, 2, 3]], quads[:, [1, 2, 3]])
-    return np.concatenate([a, b])
 
 
 def _clean(

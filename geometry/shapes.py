@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from .conductor import Conductor, Disc, MeshFile, Plate, Polygon, Strip, Wire
+from .contact import segment_distance
 from .errors import InputError
 
 Floats = NDArray[np.float64]
@@ -210,22 +211,25 @@ def _polygon(polygon: Polygon) -> Region:
 
 def _refuse_crossing_sides(polygon: Polygon, outline: Floats) -> None:
     n = len(outline)
-    ends = np.roll(outline, -1, axis=0)
-
-    def turn(p: Floats, q: Floats, r: Floats) -> float:
-        return float((q[0] - p[0]) * (r[1] - p[1]) - (q[1] - p[1]) * (r[0] - p[0]))
-
-    for i in range(n):
-        for j in range(i + 2, n):
-            if i == 0 and j == n - 1:
-                continue
-            p, q, r, s = outline[i], ends[i], outline[j], ends[j]
-            if turn(p, q, r) * turn(p, q, s) <= 0 and turn(r, s, p) * turn(r, s, q) <= 0:
-                raise InputError(
-                    f"side {i + 1} and side {j + 1} of the polygon touch or cross.",
-                    where=place_of(polygon, "points"),
-                    allowed="a simple polygon, corners in order around it",
-                )
+    i, j = np.triu_indices(n, k=2)
+    apart = (j - i) % n < n - 1  # not neighbours around the polygon
+    i, j = i[apart], j[apart]
+    start = np.column_stack([outline, np.zeros(n)])
+    end = np.roll(start, -1, axis=0)
+    distance, _, _ = segment_distance(start[i], end[i], start[j], end[j])
+    d = end - start
+    folds = (d * np.roll(d, -1, axis=0)).sum(1) < -(1 - 1e-12) * np.linalg.norm(d, axis=1) * np.linalg.norm(
+        np.roll(d, -1, axis=0), axis=1
+    )
+    bad = distance <= 1e-9 * np.ptp(outline, axis=0).max()
+    if bad.any() or folds.any():
+        first = int(i[np.argmax(bad)]) if bad.any() else int(np.argmax(folds))
+        second = int(j[np.argmax(bad)]) if bad.any() else (first + 1) % n
+        raise InputError(
+            f"side {first + 1} and side {second + 1} of the polygon touch or cross.",
+            where=place_of(polygon, "points"),
+            allowed="a simple polygon, corners in order around it",
+        )
 
 
 def wire_points(wire: Wire) -> Floats:

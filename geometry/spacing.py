@@ -10,7 +10,14 @@ from scipy.sparse import coo_array
 from scipy.sparse.csgraph import dijkstra
 from scipy.spatial import KDTree
 
-from .contact import clip_to_triangle, half_of, overlap_depth, segment_distance, segment_triangle_distance
+from .contact import (
+    clip_to_triangle,
+    half_of,
+    overlap_depth,
+    point_triangle_distance,
+    segment_distance,
+    segment_triangle_distance,
+)
 from .errors import InputError
 from .mesh import Mesh
 
@@ -84,15 +91,10 @@ def _balls(points: Floats) -> tuple[Floats, Floats]:
 
 
 def check_sheet_contacts(mesh: Mesh, shifts: Floats) -> None:
+    """Sheets neither overlap nor cross, and where they touch they share edges; `shifts` (k, 3) of the copies."""
     corners = mesh.points[mesh.triangles]
     centre, radius = _balls(corners)
     _, height = triangle_heights(mesh)
-    border, _ = boundary_edges(mesh)
-    ends = mesh.points[border[:, :2]]
-    edge_centre, edge_radius = _balls(ends)
-    for shift in shifts:
-        for e, t in _near_pairs(edge_centre, edge_radius, centre, radius, shift):
-            _refuse_unmatched(mesh, border[e], ends[e], t, corners[t] + shift, height, shift)
     for shift in half_of(shifts):
         for i, j in _near_pairs(centre, radius, centre, radius, shift):
             if not shift.any():
@@ -107,6 +109,12 @@ def check_sheet_contacts(mesh: Mesh, shifts: Floats) -> None:
                     where=place(mesh, int(mesh.triangle_conductor[i[n]])),
                     hint=REMEDY if not shift.any() else "Make the conductor smaller than the lattice allows.",
                 )
+    border, _ = boundary_edges(mesh)
+    ends = mesh.points[border[:, :2]]
+    edge_centre, edge_radius = _balls(ends)
+    for shift in shifts:
+        for e, t in _near_pairs(edge_centre, edge_radius, centre, radius, shift):
+            _refuse_unmatched(mesh, border[e], ends[e], t, corners[t] + shift, height, shift)
 
 
 def _copy(shift: Floats) -> str:
@@ -118,7 +126,7 @@ def _refuse_unmatched(
 ) -> None:
     """Border edges (n, 3) that run along triangles `other` (displaced) without being one of their edges."""
     least = np.minimum(height[edge[:, 2]], height[other])
-    length, away = clip_to_triangle(ends[:, 0], ends[:, 1], corners, NEAR * least)
+    length, middle = clip_to_triangle(ends[:, 0], ends[:, 1], corners, NEAR * least)
     suspect = (length > 3 * NEAR * np.linalg.norm(ends[:, 1] - ends[:, 0], axis=1)) & (
         length > 3 * NEAR * least
     )
@@ -128,12 +136,12 @@ def _refuse_unmatched(
         miss = np.linalg.norm(corners[n][:, None] - ends[n], axis=2).min(0)
         if (miss <= SAME * 10 * least[n]).all():
             continue
-        gap = float(max(away[n], miss.min()))
-        almost = gap > SAME * 10 * least[n] and gap < 2 * NEAR * least[n]
+        gap = float(point_triangle_distance(middle[n : n + 1], corners[n : n + 1])[0])
+        almost = gap > SAME * 10 * least[n]
         raise InputError(
-            f"unmatched boundary: an edge of sheet {_name(mesh, edge[n, 2])} at {spot(ends[n].mean(0))} "
+            f"unmatched boundary: an edge of sheet {_name(mesh, edge[n, 2])} at {spot(middle[n])} "
             f"{'all but touches' if almost else 'lies on'} {_name(mesh, other[n])}{_copy(shift)} without "
-            f"sharing its mesh points (distance {gap:.2g} m), so that no current could pass.",
+            f"sharing its mesh points{f' (gap {gap:.2g} m)' if almost else ''}: no current could pass.",
             where=place(mesh, int(mesh.triangle_conductor[edge[n, 2]])),
             allowed="edges that coincide point by point, or stay clearly apart",
             hint="Close the gap or widen it." if almost else REMEDY,
@@ -149,7 +157,7 @@ def _share_point(
 
 
 def check_wire_spacing(mesh: Mesh, shifts: Floats) -> None:
-    """Segments keep the sum of their radii apart, unless they belong to one bend or junction."""
+    """Wire segments keep the sum of their radii apart, except within one bend or junction."""
     p = mesh.points[mesh.segments]
     centre, half = _balls(p)
     radius, length = mesh.segment_radius, mesh.segment_lengths

@@ -129,7 +129,7 @@ def _zip_steps(p: int, q: int, mirrored: bool) -> list[tuple[str, int, int]]:
     """Order in which p inner and q outer intervals of a sector are joined by triangles."""
     steps, i, j = [], 0, 0
     while i < p or j < q:
-        if j < q and (i == p or (j + 1) * p <= (i + 1) * q):
+        if j < q and (i == p or (2 * j + 1) * p <= (2 * i + 1) * q):
             steps.append(("outer", p - i, q - j - 1) if mirrored else ("outer", i, j))
             j += 1
         else:

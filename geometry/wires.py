@@ -142,11 +142,15 @@ def attach_to_sheets(
 ) -> list[list[Floats]]:
     """Put a node wherever a leg ends on or pierces a sheet (or its copy); returns these points by sheet."""
     found: list[list[Floats]] = [[] for _ in regions]
-    for leg in legs:
-        for region, points in zip(regions, found, strict=True):
-            for shift in shifts:
-                local = region.local(np.stack([leg.start, leg.end]) - shift)[:, 2]
-                for t in _plane_crossings(local, tolerance):
+    if not legs:
+        return found
+    ends = np.array([[leg.start, leg.end] for leg in legs])
+    for region, points in zip(regions, found, strict=True):
+        for shift in shifts:
+            height = region.local((ends - shift).reshape(-1, 3))[:, 2].reshape(-1, 2)
+            for n in np.flatnonzero((height.min(1) <= tolerance) & (height.max(1) >= -tolerance)).tolist():
+                leg = legs[n]
+                for t in _plane_crossings(height[n], tolerance):
                     here = leg.start + t * (leg.end - leg.start)
                     if region.contains((here - shift)[None], tolerance)[0]:
                         leg.nodes.append(t * leg.length)
