@@ -91,7 +91,7 @@ def _balls(points: Floats) -> tuple[Floats, Floats]:
 
 
 def check_sheet_contacts(mesh: Mesh, shifts: Floats) -> None:
-    """Sheets neither overlap nor cross, and where they touch they share edges; `shifts` (k, 3) of the copies."""
+    """Sheets neither overlap nor cross; where they touch they share edges. `shifts` (k, 3): of the copies."""
     corners = mesh.points[mesh.triangles]
     centre, radius = _balls(corners)
     _, height = triangle_heights(mesh)
