@@ -81,7 +81,10 @@ def headline(result: Result, verdicts: Sequence[Verdict]) -> str:
         text = f"{missed} of {len(verdicts)} {limits} {'is' if missed == 1 else 'are'} not met"
     else:
         text = "The limit is met" if len(verdicts) == 1 else f"All {len(verdicts)} limits are met"
-    return text + (f"; {close} too close to call." if close else ".")
+    if not close:
+        return f"{text}."
+    which = "1 lies closer to its limit" if close == 1 else f"{close} lie closer to their limits"
+    return f"{text}; {which} than the estimated error: too close to call."
 
 
 def tone(result: Result, verdicts: Sequence[Verdict]) -> str:
