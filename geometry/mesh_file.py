@@ -30,6 +30,8 @@ def read_mesh_file(conductor: MeshFile, tolerance: float) -> tuple[Floats, Ints,
     where = place_of(conductor, "path")
     raw = _read(conductor, where)
     points = np.asarray(raw.points, dtype=float)
+    if not len(points):
+        raise InputError(f"'{conductor.path}' has no points.", where=where)
     if points.shape[1:] == (2,):
         points = np.column_stack([points, np.zeros(len(points))])
     points = points * conductor.scale + np.asarray(conductor.offset, dtype=float)

@@ -138,6 +138,8 @@ def _refuse_unmatched(
             continue
         gap = float(point_triangle_distance(middle[n : n + 1], corners[n : n + 1])[0])
         almost = gap > SAME * 10 * least[n]
+        if almost and miss.min() <= SAME * 10 * least[n]:
+            continue  # a sharp corner that ends on the edge's own end
         raise InputError(
             f"unmatched boundary: an edge of sheet {_name(mesh, edge[n, 2])} at {spot(middle[n])} "
             f"{'all but touches' if almost else 'lies on'} {_name(mesh, other[n])}{_copy(shift)} without "

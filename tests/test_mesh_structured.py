@@ -323,3 +323,14 @@ def test_refused(case):
     action, message = REFUSED[case]
     with pytest.raises(InputError, match=message):
         action()
+
+
+def test_lines_close_together_make_thin_cells_but_no_false_alarm():
+    mesh = build(
+        plate("p", (0, 0, 4), (6.90386, 9.30387)),
+        strip("s", (3.45193, 4.07449, 4), (7.16522, 4.07449, 4), 0.91394, element_size=0.7 * MM),
+        wire("probe", (-3.03064, 4.07449, 0), (-3.03064, 4.07449, 4)),
+        plate("fin", (-3.0301, 0, 2), (5, 4), axis=np.array([0, 1.0, 0]), normal=np.array([1.0, 0, 0])),
+    )
+    assert sheet_parts(mesh) == 1
+    assert mesh.triangle_areas.sum() == pytest.approx((6.90386 * 9.30387 + 3.71329 * 0.91394 + 20) * MM**2)
