@@ -334,3 +334,12 @@ def test_lines_close_together_make_thin_cells_but_no_false_alarm():
     )
     assert sheet_parts(mesh) == 1
     assert mesh.triangle_areas.sum() == pytest.approx((6.90386 * 9.30387 + 3.71329 * 0.91394 + 20) * MM**2)
+
+
+@pytest.mark.parametrize("order", [1, -1])
+def test_finer_strip_on_a_plate_edge_refines_the_plate_there(order):
+    parts = [plate("p", (0, 0, 3), (10, 10)), strip("s", (5, 1, 3), (12, 1, 3), 1.5, element_size=0.4 * MM)]
+    mesh = build(*parts[::order])
+    assert sheet_parts(mesh) == 1
+    on_edge = border_points(mesh, 0, 5.0)[:, 1]
+    assert ((on_edge > 0.24 * MM) & (on_edge < 1.76 * MM)).sum() == 5

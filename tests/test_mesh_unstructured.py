@@ -165,3 +165,16 @@ def test_missing_gmsh_names_the_system_libraries(monkeypatch, fault):
     monkeypatch.setattr(builtins, "__import__", no_gmsh)
     with pytest.raises(InputError, match=r"cannot be loaded.*libglu1-mesa libgl1 .*libgomp1"):
         build(polygon("patch", *U_SLOT))
+
+
+@pytest.mark.gmsh
+@pytest.mark.parametrize("sizes", [(2, 0.6), (0.6, 2)])
+def test_border_between_a_coarse_and_a_fine_sheet_matches(sizes):
+    coarse, fine = (s * MM for s in sizes)
+    mesh = build(
+        plate("left", (-9.5, 0, 9), (8, 10), element_size=coarse),
+        plate("right", (9.5, 0, 9), (8, 10), element_size=fine),
+        method="unstructured",
+    )
+    left, right = border_points(mesh, 0, -13.5), border_points(mesh, 0, 13.5)
+    np.testing.assert_allclose(left[:, 1:], right[:, 1:], atol=1e-9)
