@@ -95,9 +95,35 @@ class SheetStack:
 
     def impedance(self, kt2: ArrayLike, polarisation: str) -> Complexes:
         """``-E/J`` of the sheet for one plane wave, ohm; of the shape of `kt2`."""
+        kt2 = np.asarray(kt2, float)
+        deep = self._deep_from()
+        if np.any(kt2 > deep):
+            value = np.empty(kt2.shape, complex)
+            value[kt2 <= deep] = self.impedance(kt2[kt2 <= deep], polarisation)
+            value[kt2 > deep] = self._deep(kt2[kt2 > deep], polarisation)
+            return value
         down = line_impedance(kt2, self.below, polarisation, self.k, "ground" if self.ground else "air")
         up = line_impedance(kt2, self.above, polarisation, self.k)
         return up * down / (up + down)
+
+    @property
+    def neighbours(self) -> tuple[complex, complex]:
+        """Permittivities just below and just above the sheet."""
+        return (self.below[0][0] if self.below else 1.0, self.above[0][0] if self.above else 1.0)
+
+    def _deep_from(self) -> float:
+        """kt^2 beyond which the waves die within the adjoining layers, to exp(-40): only those two media
+        count."""
+        thinnest = min([layers[0][1] for layers in (self.below, self.above) if layers], default=np.inf)
+        return float(max(np.abs(self.neighbours))) * self.k**2 * 1.01 + (20 / thinnest) ** 2
+
+    def _deep(self, kt2: NDArray[np.float64], polarisation: str) -> Complexes:
+        lossless = not np.any(np.iscomplex(self.neighbours))
+        down, up = (e.real if lossless else e for e in map(complex, self.neighbours))
+        below, above = np.sqrt(kt2 - down * self.k**2), np.sqrt(kt2 - up * self.k**2)
+        if polarisation == "TM":
+            return -1j * ETA / self.k * (below * above / (down * above + up * below))
+        return 1j * ETA * self.k / (below + above)
 
     def z_te(self, kt2: ArrayLike) -> Complexes:
         """Spectral impedance of TE waves, ohm."""

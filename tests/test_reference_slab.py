@@ -61,6 +61,16 @@ def test_free_space_sheet_and_image_over_ground():
     assert np.allclose(over_ground.z_te(kt2), ETA * K0 / (2 * kz) * (1 - np.exp(-0.6j * kz)), rtol=1e-12)
 
 
+def test_shortcut_for_deeply_evanescent_waves():
+    stack = SheetStack(((2.55 - 0.01j, 0.19), (4.0, 0.1)), ((1.7, 0.08), (1.0, 0.2)), ground=True)
+    for kt2 in np.array([150.0, 252.0]) ** 2:
+        for polarisation in ("TE", "TM"):
+            down = line_impedance(kt2, stack.below, polarisation, end="ground")
+            up = line_impedance(kt2, stack.above, polarisation)
+            z = stack.impedance(kt2, polarisation)
+            assert abs(z - up * down / (up + down)) < 1e-12 * abs(z)
+
+
 def test_cutting_a_layer_in_two_changes_nothing():
     kt2 = np.array([0.0, 0.5, 1.5, 9.0]) * K0**2
     whole = line_impedance(kt2, [(4.0 - 0.1j, 0.2), (2.0, 0.1)], "TM", end="ground")
