@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from ..geometry.conductor import Conductor, Disc, Material, MeshFile, Plate, Polygon, Strip, Wire
 from ..geometry.errors import InputError, nearest
+from ..geometry.lattice import Lattice
 from ..geometry.mesh_file import read_mesh_file
 from ..geometry.place import Placement
 from ..geometry.port import Gap, Load, Port
@@ -21,6 +22,7 @@ from .schema import EXPECTED, Key
 Floats = NDArray[np.float64]
 
 LONGEST_GAP = 0.1  # wavelengths: a wider gap is no lumped port
+CLOSEST, FARTHEST = 0.01, 20.0  # shortest and longest lattice vector, wavelengths
 THICKEST_WIRE = 0.05  # wavelengths: beyond it the current varies around the wire
 
 
@@ -87,6 +89,18 @@ def build_conductor(values: Values, where: str, folder: Path) -> Conductor:
 def _similar_file(path: Path) -> str:
     names = [p.name for p in path.parent.iterdir()][:500] if path.parent.is_dir() else []
     return nearest(path.name, names)
+
+
+def check_lattice(lattice: Lattice, wavelength: float) -> None:
+    """Refuse a lattice too fine or too coarse to be one, at the shortest wavelength (m)."""
+    for length in np.linalg.norm(lattice.reduced.vectors, axis=1):
+        if not CLOSEST * wavelength <= length <= FARTHEST * wavelength:
+            raise InputError(
+                f"the lattice has the period {in_words(length, 'length')}, {length / wavelength:.3g} "
+                "wavelengths at the highest frequency.",
+                where="[lattice]",
+                allowed=f"{CLOSEST:g} to {FARTHEST:g} wavelengths",
+            )
 
 
 def check_wire_radii(conductors: Sequence[Conductor], wavelength: float) -> None:
@@ -233,7 +247,7 @@ def build_frequencies(values: Values, where: str = "[band]") -> Floats:
     if len(ways) != 1 or stray:
         given = [name for name in values if values[name] is not None]
         raise InputError(
-            f"{' and '.join(given) if given else 'nothing'} is given.",
+            f"the band is given by {', '.join(given) or 'nothing'}.",
             where=where,
             allowed="start, stop and points; or frequency; or frequencies",
         )

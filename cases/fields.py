@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from ..geometry.errors import InputError, nearest
-from .quantity import KINDS, UNITS, Quantities
+from .quantity import UNITS, Quantities
 from .schema import EXPECTED, MOST_ROWS, Key, Table
 
 Values = dict[str, Any]
@@ -51,7 +51,7 @@ def _read_key(raw: Mapping[str, object], name: str, key: Key, place: str, quanti
     where = f"{place}, key '{name}'"
     if name not in raw:
         if key.required:
-            raise InputError(f"'{name}' is missing.", where=place, allowed=key.text.rstrip("."))
+            raise InputError(f"'{name}' is missing.", where=place, hint=f"It means: {key.text}")
         if key.default is None:
             return None
     return read_value(raw.get(name, key.default), key, where, quantities)
@@ -116,7 +116,7 @@ def _read_text(given: object, key: Key, where: str) -> str:
             hint=nearest(given, key.choices),
         )
     if key.required and not given.strip():
-        raise InputError("the text is empty.", where=where, allowed=key.text.rstrip("."))
+        raise InputError("the text is empty.", where=where, hint=f"It means: {key.text}")
     return given
 
 
@@ -146,8 +146,8 @@ def _read_wave(given: object, where: str, quantities: Quantities) -> complex:
     allowed = 'amplitude @ phase, such as "1 @ 90 deg"'
     if isinstance(given, str) and "@" in given:
         amplitude, _, phase = given.partition("@")
-        size = quantities.value(amplitude, "ratio", where)
-        angle = quantities.value(phase, "angle", where)
+        size = quantities.value(amplitude.strip(), "ratio", where)
+        angle = quantities.value(phase.strip(), "angle", where)
     else:
         if not isinstance(given, (int, float, str)):
             raise InputError(f"{_shown(given)} is not a drive.", where=where, allowed=allowed)
@@ -231,11 +231,6 @@ def _toml(value: Any, kind: str) -> str:
         return str(int(value))
     unit = UNITS["angle" if kind == "co" else kind]
     return f'"{float(value)!r} {unit}"' if unit else repr(float(value))
-
-
-def example(kind: str) -> str:
-    """What a value of this kind looks like, for documentation."""
-    return KINDS[kind][1] if kind in KINDS else kind
 
 
 def _shown(given: object) -> str:

@@ -143,7 +143,7 @@ class Quantities:
         """
         word, example = KINDS[kind]
         if isinstance(given, bool) or not isinstance(given, (int, float, str)):
-            raise InputError(f"{given!r} is not {word}.", where=where, allowed=f'{word} such as "{example}"')
+            raise InputError(f"{given} is not {word}.", where=where, allowed=f'{word} such as "{example}"')
         result = self._evaluate(given, where)
         if result.dimensionality != _dimension(kind):
             shown = f"'{given}'" if isinstance(given, str) else f"{given}"

@@ -24,6 +24,7 @@ from .scan_plan import build_scan_plan
 from .schema import CONDUCTORS, MOST_SOLUTIONS, MOST_TABLES, NOT_YET, REPEATED, SINGLE, STEEPEST, TOP, Table
 
 LARGEST_FILE = 5_000_000  # bytes
+ELEMENTS_PER_WAVELENGTH = 20.0
 
 
 def read_case(path: str | Path, overrides: Mapping[str, str] | None = None) -> Job:
@@ -68,7 +69,9 @@ def _load(path: Path) -> str:
             f"the file is not UTF-8 text: byte 0x{data[fault.start]:02x} in line {line}.", allowed="UTF-8"
         ) from None
     if not text.strip():
-        raise InputError("the file is empty.", allowed="a case: title, [band], [lattice], [[conductor]], ...")
+        raise InputError(
+            "the file is empty.", allowed="a case with title, [band], [lattice], [[conductor]], [[port]]"
+        )
     return text
 
 
@@ -119,8 +122,8 @@ def _parse_toml(text: str) -> dict[str, object]:
         raise InputError(
             f"this is not TOML: {fault}.", hint='Quantities stand in quotes: radius = "0.5 mm".'
         ) from None
-    except ValueError as fault:  # a number of thousands of digits
-        raise InputError(f"this is not TOML: {fault}.") from None
+    except ValueError:
+        raise InputError("this is not TOML: a whole number has thousands of digits.") from None
     except RecursionError:
         raise InputError("the lists are nested too deep to be a case.") from None
 
@@ -237,6 +240,7 @@ def _draft(
     frequencies = build.build_frequencies(single["band"])
     wavelength = SPEED_OF_LIGHT / float(frequencies[-1])
     lattice = Lattice(single["lattice"]["a"], single["lattice"]["b"])
+    build.check_lattice(lattice, wavelength)
     conductors = [
         build.build_conductor(values, _place("conductor", k, values), folder)
         for k, values in enumerate(repeated["conductor"], start=1)
@@ -268,9 +272,13 @@ def _draft(
 
 def _element_size(mesh: Values, wavelength: float) -> float:
     """Element size in m, written back into the table with the alternative removed."""
-    size = mesh["element_size"]
+    size, count = mesh["element_size"], mesh["per_wavelength"]
+    if size is not None and count is not None:
+        raise InputError(
+            "element_size and per_wavelength are given together.", where="[mesh]", allowed="one of the two"
+        )
     if size is None:
-        size = mesh["element_size"] = wavelength / mesh["per_wavelength"]
+        size = mesh["element_size"] = wavelength / (count or ELEMENTS_PER_WAVELENGTH)
     if size > wavelength / 6:
         raise InputError(
             f"element_size of {1e3 * size:.4g} mm is {size / wavelength:.3g} wavelengths at the highest "

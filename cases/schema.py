@@ -213,7 +213,7 @@ MESH = _table(
     "[mesh]",
     "How finely the conductors are cut up.",
     element_size=_length("Target edge length of the elements."),
-    per_wavelength=Key("ratio", "Instead: elements per wavelength at the highest frequency.", default=20,
+    per_wavelength=Key("ratio", "Instead: elements per wavelength at the highest frequency. Default 20.",
                        low=6.0, high=400.0),
     method=Key("choice", "structured: regular, canonical shapes only; unstructured: any shape.",
                choices=("structured", "unstructured"), default="structured"),

@@ -179,6 +179,7 @@ def _fit_in_leg(
             f"the gap of {1e3 * width:.4g} mm {told}: its middle is {1e3 * room:.4g} mm from there.",
             where=place,
             allowed=f"up to {2e3 * room:.4g} mm at this place, or a place inside the straight leg",
+            hint="Start a conductor that runs on into the next cell elsewhere." if at_end else "",
         )
     return start + middle * direction, direction
 

@@ -242,7 +242,7 @@ SHAPES = [
     ),
     strip("strip over its own copy", '"12.6 mm"', '"17 mm"', "'dipole'", "overlap"),
     more(
-        "unmatched boundary",
+        "disc that bites into a strip",
         '[[conductor]]\nkind = "disc"\nname = "cap"\nradius = "4 mm"\ncentre = ["arm + 4 mm", 0, "14 mm"]\n',
         "cap",
         "dipole",
@@ -302,8 +302,15 @@ MESHES = [
         "mesh file of unknown extension", vtk(), "cannot be read as a mesh", "sheet.mash", file="sheet.mash"
     ),
     mesh("empty mesh file", "", "cannot be read as a mesh"),
-    mesh("empty stl", "", "'sheet'", "key 'file'", file="sheet.stl"),
-    mesh("stl without facets", "solid x\nendsolid x\n", "'sheet'", "key 'file'", file="sheet.stl"),
+    mesh("empty stl", "", "has no points", "'sheet'", "key 'file'", file="sheet.stl"),
+    mesh(
+        "stl without facets",
+        "solid x\nendsolid x\n",
+        "has no points",
+        "'sheet'",
+        "key 'file'",
+        file="sheet.stl",
+    ),
     mesh("truncated msh", MSH[: MSH.index("2 2 2 1 1 1 3 4")], "'sheet'", "key 'file'", file="sheet.msh"),
     mesh("msh cut in the nodes", MSH[: MSH.index("4 0 2 0")], "'sheet'", "key 'file'", file="sheet.msh"),
     mesh("text called msh", "hello\n", "cannot be read as a mesh", file="sheet.msh"),
@@ -329,7 +336,7 @@ MESHES = [
     BadCase(
         "mesh that does not meet its copy",
         edit(MESH, '["30 mm", 0]', '["10 mm", "1 mm"]'),
-        ("'sheet'",),
+        ("'sheet'", "unmatched boundary", "of the neighbour cell"),
         {"sheet.vtk": vtk()},
     ),
     BadCase(

@@ -18,10 +18,15 @@ RANGES = [
         "stop without start",
         'start = "5 GHz"\n',
         "",
-        "stop and points is given",
+        "the band is given by stop, points",
         "start, stop and points; or",
     ),
-    wire("two ways to give a band", "points = 5", 'points = 5\nfrequency = "5 GHz"', "frequency is given"),
+    wire(
+        "two ways to give a band",
+        "points = 5",
+        'points = 5\nfrequency = "5 GHz"',
+        "by start, stop, points, frequency",
+    ),
     BadCase(
         "falling list",
         WIRE.replace('start = "5 GHz"\nstop = "5.8 GHz"\npoints = 5', 'frequencies = ["6 GHz", "5 GHz"]'),
@@ -74,6 +79,13 @@ RANGES = [
         "'structred' is not known",
         "Did you mean 'structured'?",
     ),
+    more(
+        "two element sizes",
+        '[mesh]\nelement_size = "2 mm"\nper_wavelength = 20\n',
+        "element_size and per_wavelength are given together",
+    ),
+    wire("tiny lattice", '["30 mm", 0]', '["30 nm", 0]', "3e-05 mm", "0.01 to 20 wavelengths"),
+    wire("giant lattice", '["30 mm", 0]', '["30 m", 0]', "503 wavelengths", "0.01 to 20 wavelengths"),
     more("coarse mesh", '[mesh]\nelement_size = "20 mm"\n', "20 mm is 0.387 wavelengths", "up to a sixth"),
     more(
         "huge mesh", '[mesh]\nelement_size = "1 um"\n', "unknowns", "[mesh], key 'element_size'", base=STRIP
