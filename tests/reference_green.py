@@ -13,7 +13,7 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from reference_sinusoid import K0, reciprocal, vertical_wavenumber
+from reference_sinusoid import K0, Vector, reciprocal, vertical_wavenumber
 from scipy.special import wofz
 
 Floats = NDArray[np.float64]
@@ -41,7 +41,7 @@ def _points(vectors: Floats, radius: float) -> tuple[Floats, NDArray[np.int64]]:
     return points[keep], grid[keep]
 
 
-def _modes(lattice: ArrayLike, kt: ArrayLike, radius: float, k: float) -> tuple[Floats, NDArray, float]:
+def _modes(lattice: ArrayLike, kt: Vector, radius: float, k: float) -> tuple[Floats, NDArray, float]:
     """Floquet wave vectors near the origin, (n, 2), their kz, (n,), and the cell area."""
     vectors, area = reciprocal(lattice)
     waves = np.asarray(kt, float) + _points(vectors, radius + float(np.linalg.norm(kt)))[0]
@@ -49,7 +49,7 @@ def _modes(lattice: ArrayLike, kt: ArrayLike, radius: float, k: float) -> tuple[
 
 
 def green_plain(
-    point: ArrayLike, lattice: ArrayLike, kt: ArrayLike, k: float = K0, depth: float = 32.0
+    point: ArrayLike, lattice: ArrayLike, kt: Vector, k: float = K0, depth: float = 32.0
 ) -> complex:
     """Plain spectral sum ``(1/S) SUM exp(-j k_pq.rho - j kz|z|) / (2j kz)``; modes down to exp(-depth).
     Needs z != 0."""
@@ -78,7 +78,7 @@ def _screened(distance: Floats, u: float) -> list[Floats]:
 def green_kummer(
     point: ArrayLike,
     lattice: ArrayLike,
-    kt: ArrayLike,
+    kt: Vector,
     k: float = K0,
     radius: float = 600.0,
     u: float | None = None,
@@ -107,7 +107,7 @@ def green_kummer(
     return complex(far + np.sum(np.exp(-1j * (rho @ np.asarray(kt))) * images))
 
 
-def _erfc_pair(a: NDArray[np.complex128], b: NDArray[np.complex128]) -> NDArray[np.complex128]:
+def _erfc_pair(a: NDArray[np.complex128], b: NDArray[np.complex128]) -> NDArray[np.complexfloating]:
     """``exp(2ab) erfc(a + b) + exp(-2ab) erfc(a - b)`` by the Faddeeva function w, so that nothing overflows.
 
     With erfc(t) = exp(-t^2) w(jt) each product is ``exp(-a^2-b^2) w(j(a +- b))``; where Re t < 0,
@@ -125,7 +125,7 @@ def _erfc_pair(a: NDArray[np.complex128], b: NDArray[np.complex128]) -> NDArray[
 def green_ewald(
     point: ArrayLike,
     lattice: ArrayLike,
-    kt: ArrayLike,
+    kt: Vector,
     k: float = K0,
     split: float | None = None,
     depth: float = 6.2,

@@ -51,7 +51,7 @@ ECHELON = {
 (CLOSED)."""
 
 
-def _exponential_integral(x: NDArray[np.float64]) -> NDArray[np.complex128]:
+def _exponential_integral(x: NDArray[np.float64]) -> NDArray[np.complexfloating]:
     """``E1(jx) = -Ci(x) + j (Si(x) - pi/2)`` for x > 0."""
     si, ci = sici(x)
     return -ci + 1j * (si - np.pi / 2)
@@ -75,7 +75,7 @@ def _wave_integrals(
 
 def mutual_impedance(
     length: float, side: ArrayLike, axial: ArrayLike = 0.0, k: float = K0
-) -> NDArray[np.complex128]:
+) -> NDArray[np.complexfloating]:
     """Mutual impedance of two equal parallel dipoles by sine and cosine integrals, referred to the centre
     currents.
 
@@ -130,7 +130,7 @@ def mutual_impedance_quadrature(length: float, side: float, axial: float = 0.0, 
 
 def mutual_over_ground(
     length: float, side: ArrayLike, axial: ArrayLike, height: float, k: float = K0
-) -> NDArray[np.complex128]:
+) -> NDArray[np.complexfloating]:
     """Mutual impedance of two dipoles parallel to a perfect ground at `height`, ohm (image of opposite
     sign)."""
     side = np.asarray(side, float)

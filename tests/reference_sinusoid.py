@@ -13,6 +13,7 @@ inverse.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -21,6 +22,7 @@ from reference_pair import ETA, K0, mutual_impedance, mutual_over_ground
 from scipy.special import k0 as bessel_k0
 
 Floats = NDArray[np.float64]
+Vector = Sequence[float] | Floats
 RECTANGULAR = ((0.55, 0.0), (0.0, 0.55))
 TRIANGULAR = ((0.6, 0.0), (0.3, 0.5))
 
@@ -74,7 +76,7 @@ def reciprocal(lattice: ArrayLike) -> tuple[Floats, float]:
     return 2 * np.pi * np.linalg.inv(vectors).T, float(abs(np.linalg.det(vectors)))
 
 
-def vertical_wavenumber(squared: ArrayLike) -> NDArray[np.complex128]:
+def vertical_wavenumber(squared: ArrayLike) -> NDArray[np.complexfloating]:
     """Square root of kz^2 on the branch of exp(+j w t): positive, or ``-j |kz|`` when evanescent."""
     squared = np.asarray(squared, float)
     return np.where(squared >= 0, 1.0, -1j) * np.sqrt(np.abs(squared))
@@ -93,7 +95,7 @@ def sinusoid_transform(kx: ArrayLike, length: float, k: float = K0) -> Floats:
 def array_impedance(
     lattice: ArrayLike,
     length: float,
-    kt: ArrayLike,
+    kt: Vector,
     *,
     offset: float,
     height: float | None = None,
@@ -133,7 +135,7 @@ def array_impedance(
 def array_impedance_by_rows(
     lattice: ArrayLike,
     length: float,
-    kt: ArrayLike,
+    kt: Vector,
     *,
     offset: float,
     height: float | None = None,
@@ -178,7 +180,7 @@ def array_impedance_by_rows(
 def array_impedance_in_space(
     lattice: ArrayLike,
     length: float,
-    kt: ArrayLike,
+    kt: Vector,
     *,
     offset: float,
     height: float | None = None,

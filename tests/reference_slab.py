@@ -15,7 +15,7 @@ from numpy.typing import ArrayLike, NDArray
 from reference_pair import ETA, K0
 from scipy.optimize import brentq
 
-Complexes = NDArray[np.complex128]
+Complexes = NDArray[np.complexfloating]
 Layer = tuple[complex, float]
 
 SURFACE_WAVES = (

@@ -19,12 +19,12 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from reference_sinusoid import reciprocal
+from reference_sinusoid import Vector, reciprocal
 from reference_slab import SheetStack
 from scipy.special import jv
 
 Floats = NDArray[np.float64]
-Complexes = NDArray[np.complex128]
+Complexes = NDArray[np.complexfloating]
 
 
 @dataclass(frozen=True)
@@ -171,7 +171,7 @@ def excitation(strip: Strip, size: Size) -> Floats:
     return np.concatenate([v.ravel(), np.zeros(size.along * size.transverse)])
 
 
-def matrix(strip: Strip, lattice: ArrayLike, kt: ArrayLike, stack: SheetStack, size: Size) -> Complexes:
+def matrix(strip: Strip, lattice: ArrayLike, kt: Vector, stack: SheetStack, size: Size) -> Complexes:
     """Galerkin matrix, (N M + N My) squared, index n M + m, Jx first; lattice vector a must lie along x."""
     vectors, area = reciprocal(lattice)
     if vectors[1, 0] != 0:
@@ -206,7 +206,7 @@ def matrix(strip: Strip, lattice: ArrayLike, kt: ArrayLike, stack: SheetStack, s
 
 
 def solve_strip(
-    strip: Strip, lattice: ArrayLike, kt: ArrayLike, stack: SheetStack | None = None, size: Size | None = None
+    strip: Strip, lattice: ArrayLike, kt: Vector, stack: SheetStack | None = None, size: Size | None = None
 ) -> complex:
     """Active impedance at the gap, ohm.
 
