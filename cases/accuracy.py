@@ -1,20 +1,24 @@
-"""How far the mesh lets the numbers be trusted: a few sample points solved again on a finer mesh.
+"""How far the mesh lets the numbers be trusted: a few sample points solved again on another mesh.
 
-The elements are made smaller by `REFINEMENT`. If a quantity converges as (element size)^p, its remaining
-error is the observed change times 1 / (1 - REFINEMENT^-p) (Richardson's extrapolation). Impedances of
-strips and plates converge between first and second order, because edge currents are singular; the
-first-order factor, 3, is used throughout: at second order it overstates the error 1.7 times. It is an
-estimate at samples, not a bound.
+If a quantity converges as (element size)^p, the error left on the finer of two meshes is the change
+between them times 1 / (r^p - 1), and on the coarser one times 1 / (1 - r^-p), r the ratio of their element
+sizes (Richardson's extrapolation). Impedances of strips and plates converge between first and second
+order, because edge currents are singular; first order is assumed throughout: 3 times the change for a mesh
+finer by 1.5, 2 times for one coarser by 1.5; at second order this overstates the error 1.7 times. r is the
+ratio that the meshes really show. A finer mesh is preferred; where there is none (wires already at the
+thin-wire limit of their segments, or too little memory), a coarser one serves. The result is an estimate
+at samples, not a bound.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import replace
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from ..geometry.cell import UnitCell
+from ..geometry.errors import InputError
 from ..solver.pattern import respond
 from ..solver.result import ScanPoints, Sweep
 from .job import Job
@@ -22,12 +26,13 @@ from .judge import AMPLITUDES, judge, level
 from .partial import join_frequencies
 from .result import Accuracy, Result
 
-REFINEMENT = 1.5
+RATIOS = (1.5, 2.0, 3.0)
+"""Tried in turn: on a mesh of few elements a small change may do nothing."""
+LEAST_RATIO = 1.3
 ORDER = 1.0
-FACTOR = 1.0 / (1.0 - REFINEMENT**-ORDER)
 MOST_FREQUENCIES = 4
 
-Solve = Callable[[UnitCell, float, ScanPoints], Sweep]
+Solve = Callable[[float, ScanPoints], Sweep]
 
 
 def choose_samples(result: Result) -> dict[int, list[int]]:
@@ -70,39 +75,67 @@ def choose_samples(result: Result) -> dict[int, list[int]]:
     return samples
 
 
-def refined_cell(job: Job) -> tuple[UnitCell | None, str]:
-    """The cell on a mesh finer by `REFINEMENT`, or None and the reason why there is none."""
+@dataclass(frozen=True)
+class Comparison:
+    """Another mesh of the cell; `factor` turns the change between the two into the error of the run's own."""
+
+    cell: UnitCell
+    kind: str
+    factor: float
+
+
+def comparisons(job: Job) -> Iterator[Comparison]:
+    """Meshes to compare the job's own with, best first: a finer one, then a coarser one; none if fixed."""
     if not callable(job.remesh):
-        return None, "the job cannot be meshed anew"
-    cell: UnitCell = job.remesh(1 / REFINEMENT)  # type: ignore[assignment]
-    before, after = (len(c.mesh.triangles) + len(c.mesh.segments) for c in (job.cell, cell))
-    if after <= before:
-        return None, "the mesh cannot be refined (a mesh file is used as it is)"
-    return cell, ""
+        return
+    for kind, direction in (("finer", -1), ("coarser", 1)):
+        for wanted in RATIOS:
+            try:
+                cell: UnitCell = job.remesh(wanted**direction)  # type: ignore[assignment]
+            except InputError:
+                continue  # too coarse for a gap, or too fine for a wire
+            reached = (element_size(cell) / element_size(job.cell)) ** direction
+            if reached >= LEAST_RATIO:
+                yield Comparison(cell, kind, richardson(reached, kind))
+                break
 
 
-def estimate(result: Result, cell: UnitCell, solve: Solve, unknowns: tuple[int, int]) -> Accuracy:
-    """Compare `result` at sample points with solutions on the finer `cell`.
+def richardson(ratio: float, kind: str) -> float:
+    """Factor from the change between meshes of `ratio` to the error of the own mesh, at order `ORDER`."""
+    return 1.0 / (1.0 - ratio**-ORDER) if kind == "finer" else 1.0 / (ratio**ORDER - 1.0)
 
-    `solve` gives the single-frequency sweep of a cell at scan points; `unknowns`: of the run and the finer
+
+def element_size(cell: UnitCell) -> float:
+    """Mean size (m) of the elements, each weighted by its size: longest edge of a triangle, length of a
+    segment."""
+    corners = cell.mesh.points[cell.mesh.triangles.reshape(-1, 3)]
+    longest = np.linalg.norm(corners - np.roll(corners, 1, axis=1), axis=2).max(axis=1)
+    sizes = np.concatenate([longest, cell.mesh.segment_lengths])
+    return float(np.sum(sizes**2) / np.sum(sizes))
+
+
+def estimate(result: Result, other: Comparison, solve: Solve, unknowns: tuple[int, int]) -> Accuracy:
+    """Compare `result` at sample points with solutions on the `other` mesh.
+
+    `solve` gives the single-frequency sweep at scan points there; `unknowns`: of the run and of the other
     mesh.
     """
     gamma, impedance, count = 0.0, 0.0, 0
     errors: dict[str, float] = {}
     for f, points in choose_samples(result).items():
-        coarse = pick(result.sweep, f, points)
-        fine = solve(cell, float(result.job.frequency[f]), coarse.scan)
-        g, z, own = _compare(result.job, coarse, fine)
+        own = pick(result.sweep, f, points)
+        g, z, change = _compare(result.job, own, solve(float(result.job.frequency[f]), own.scan))
         gamma, impedance, count = max(gamma, g), max(impedance, z), count + len(points)
-        errors = {name: max(value, errors.get(name, 0.0)) for name, value in own.items()}
+        errors = {name: max(value, errors.get(name, 0.0)) for name, value in change.items()}
     return Accuracy(
-        factor=FACTOR,
+        factor=other.factor,
         samples=count,
-        reflection=FACTOR * gamma,
-        impedance=FACTOR * impedance,
-        errors={name: FACTOR * value for name, value in errors.items()},
+        reflection=other.factor * gamma,
+        impedance=other.factor * impedance,
+        errors={name: other.factor * value for name, value in errors.items()},
         unknowns=unknowns[0],
-        finer_unknowns=unknowns[1],
+        compared_unknowns=unknowns[1],
+        compared=other.kind,
     )
 
 
@@ -116,9 +149,9 @@ def pick(sweep: Sweep, f: int, points: list[int]) -> Sweep:
     return replace(sweep, frequency=sweep.frequency[f : f + 1], scan=scan, currents=None, **part)
 
 
-def _compare(job: Job, coarse: Sweep, fine: Sweep) -> tuple[float, float, dict[str, float]]:
+def _compare(job: Job, own: Sweep, other: Sweep) -> tuple[float, float, dict[str, float]]:
     """Largest |change of active Gamma|, relative change of the impedance matrix, and change per quantity."""
-    wide = join_frequencies([coarse, fine])  # the same wave table for both
+    wide = join_frequencies([own, other])  # the same wave table for both
     drive = [port.drive for port in job.cell.ports]
     response = respond(wide, drive, job.cell.lattice.area)
     driven = np.flatnonzero(response.drive)

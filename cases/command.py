@@ -95,7 +95,7 @@ def check(case: str, assignments: tuple[str, ...], drawing: str | None) -> int:
     help='Also write currents (VTK) at "FREQUENCY, THETA, PHI", e.g. "5.4 GHz, 30 deg, 0 deg".',
 )  # fmt: skip
 @click.option(
-    "--estimate/--no-estimate", default=True, help="Estimate the error on a finer mesh (default: do)."
+    "--estimate/--no-estimate", default=True, help="Estimate the error on another mesh (default: do)."
 )
 @click.option("--quiet", is_flag=True, help="Print the verdict only.")
 def run(
@@ -252,8 +252,8 @@ def _show_outcome(outcome: Outcome, files: list[Path]) -> None:
             click.echo(f"      {v.reason}")
             continue
         error = error_text(v).replace("±", "+/-")
-        click.echo(f"      worst {number(v.worst, v.unit)} at {v.place}")
-        click.echo(f"      margin {margin_text(v)}, estimated error {error}")
+        click.echo(f"      worst {number(v.worst, v.unit)}{' at ' if v.place else ''}{v.place}")
+        click.echo(f"      margin {margin_text(v)}{error and ', estimated error '}{error}")
     accuracy = outcome.result.accuracy
     if accuracy.samples:
         click.echo(f"estimated error: reflection coefficient +/- {accuracy.reflection:.3f}, "

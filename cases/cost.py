@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..solver.basis import build_basis
-from .accuracy import REFINEMENT
+from .accuracy import RATIOS
 from .engine import WORKING_MATRICES
 from .job import Job
 
@@ -61,7 +61,7 @@ def _growth(job: Job) -> float:
     """How many times more unknowns the finer mesh has: once per dimension of the elements."""
     triangles, segments = len(job.cell.mesh.triangles), len(job.cell.mesh.segments)
     total = max(triangles + segments, 1)
-    return (triangles * REFINEMENT**2 + segments * REFINEMENT) / total if total else 1.0
+    return (triangles * RATIOS[0] ** 2 + segments * RATIOS[0]) / total if total else 1.0
 
 
 def _memory(n: int) -> float:

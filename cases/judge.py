@@ -80,7 +80,7 @@ class Verdict:
     @property
     def place(self) -> str:
         """Where the worst value is, in degrees and GHz."""
-        if not np.isfinite(self.theta):
+        if not np.isfinite(self.theta) or np.isneginf(self.worst):
             return ""
         port = f", port {self.port}" if self.port else ""
         angles = f"theta {degrees(self.theta)}, phi {degrees(self.phi % (2 * np.pi))}"

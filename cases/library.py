@@ -24,11 +24,13 @@ def find_case(name: str) -> Path:
         If there is neither.
     """
     path = Path(name)
-    if path.exists():
+    if path.is_file():
         return path
     cases = ready_made()
     if name in cases:
         return cases[name]
+    if path.exists():
+        return path
     siblings = [file.name for file in path.parent.glob("*.toml")] if path.parent.is_dir() else []
     raise InputError(
         f"there is no file and no ready-made case '{name}'.",

@@ -36,18 +36,21 @@ class Lines(Silent):
     def __init__(self, stream: TextIO | None = None, interval: float = 10.0):
         self.stream, self.interval = stream or sys.stdout, interval
         self._stage, self._total, self._begun, self._told = "", 0, 0.0, 0.0
+        self._finished = False
 
     def start(self, stage: str, total: int) -> None:
         self._stage, self._total = stage, total
         self._begun = self._told = time.monotonic()
+        self._finished = False
         self.say(f"{stage}: {total} solutions")
 
     def advance(self, done: int) -> None:
         now = time.monotonic()
-        if done and (now - self._told > self.interval or done >= self._total):
+        finished = done >= self._total and not self._finished
+        if done and (now - self._told > self.interval or finished):
             left = (now - self._begun) * (self._total - done) / done
             self.say(f"{self._stage}: {done} of {self._total}, about {duration(left)} left")
-            self._told = now
+            self._told, self._finished = now, done >= self._total
 
     def say(self, text: str) -> None:
         print(text, file=self.stream, flush=True)

@@ -122,7 +122,7 @@ def margin_text(verdict: Verdict) -> str:
 def error_text(verdict: Verdict) -> str:
     """Estimated error of the worst value in words."""
     if not np.isfinite(verdict.error):
-        return "not estimated" if np.isnan(verdict.error) else "-"
+        return "unknown" if np.isnan(verdict.error) and np.isfinite(verdict.worst) else ""
     return f"± {number(verdict.error, verdict.unit)}"
 
 
@@ -166,7 +166,8 @@ def _accuracy(result: Result) -> dict[str, Any]:
         "samples": accuracy.samples,
         "factor": f"{accuracy.factor:.2g}",
         "unknowns": accuracy.unknowns,
-        "finer": accuracy.finer_unknowns,
+        "others": accuracy.compared_unknowns,
+        "kind": accuracy.compared,
         "note": accuracy.note,
     }
 

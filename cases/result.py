@@ -36,11 +36,12 @@ CONVENTIONS = {
 
 @dataclass(frozen=True)
 class Accuracy:
-    """Estimated discretisation error of a run, from a finer mesh at a few sample points.
+    """Estimated discretisation error of a run, from another mesh at a few sample points.
 
-    The difference between the two meshes is multiplied by `factor`. `errors` holds one number per quantity
-    of a limit: for "reflection", "cross_polar" and "grating_lobe" a linear amplitude (field ratio), for
-    the others the quantity's own unit. All NaN or empty when no estimate was made; then `note` says why.
+    The difference between the two meshes is multiplied by `factor`; `compared` is "finer" or "coarser".
+    `errors` holds one number per quantity of a limit: for "reflection", "cross_polar" and "grating_lobe" a
+    linear amplitude (field ratio), for the others the quantity's own unit. All NaN or empty when no
+    estimate was made; then `note` says why.
     """
 
     factor: float = np.nan
@@ -49,7 +50,8 @@ class Accuracy:
     impedance: float = np.nan
     errors: dict[str, float] = field(default_factory=dict)
     unknowns: int = 0
-    finer_unknowns: int = 0
+    compared_unknowns: int = 0
+    compared: str = ""
     note: str = ""
 
 

@@ -10,7 +10,8 @@ from typing import Any
 
 import numpy as np
 
-from ..solver.result import Sweep
+from ..geometry.cell import UnitCell
+from ..solver.result import ScanPoints, Sweep
 from . import accuracy
 from .engine import DirectEngine, Engine, EngineFactory, memory_free, memory_needed
 from .export import write_tables
@@ -56,7 +57,7 @@ def run_case(
 
     Finished frequencies are kept in ``out_dir/partial`` and used again when the same case is run again;
     they are removed at the end. Ctrl-C ends the run with code 130 and keeps them. With `refine` the
-    discretisation error is estimated on a finer mesh. `engine` makes the solver of a cell (tests replace it).
+    discretisation error is estimated on another mesh. `engine` makes the solver of a cell (tests replace it).
     """
     out_dir = Path(out_dir)
     out_dir.mkdir(parents=True, exist_ok=True)
@@ -179,31 +180,41 @@ def make_engine(job: Job, factory: EngineFactory = DirectEngine) -> Engine:
 
 
 def _estimate(result: Result, solver: _Lazy, told: Progress, factory: EngineFactory) -> Accuracy:
-    """Error estimate on a finer mesh, or an empty one with the reason."""
+    """Error estimate on another mesh, or an empty one with the reason."""
     job = result.job
     own, stored = solver.engine.unknowns, solver.engine.stored_bytes
-    cell, reason = accuracy.refined_cell(job)
-    if cell is None:
-        return Accuracy(unknowns=own, note=reason)
-    elements = [len(c.mesh.triangles) + len(c.mesh.segments) for c in (job.cell, cell)]
-    growth = (elements[1] / elements[0]) ** 2
-    needed = memory_needed(int(own * elements[1] / elements[0]), stored * growth)
     solver.release()
-    if needed > 0.7 * memory_free():
-        return Accuracy(unknowns=own, note=f"the finer mesh would need about {needed / 1e9:.1f} GB of memory")
+    reason = "there is no other mesh to compare with; a mesh file is used as it is"
+    for other in accuracy.comparisons(job):
+        growth = _elements(other.cell) / _elements(job.cell)
+        needed = memory_needed(int(own * growth), stored * growth**2)
+        if needed <= 0.7 * memory_free():
+            return _compared(result, other, own, told, factory)
+        reason = f"another mesh would need about {needed / 1e9:.1f} GB of memory"
+    return Accuracy(unknowns=own, note=reason)
+
+
+def _compared(
+    result: Result, other: accuracy.Comparison, own: int, told: Progress, factory: EngineFactory
+) -> Accuracy:
+    job = result.job
     count = sum(len(points) for points in accuracy.choose_samples(result).values())
-    told.start("estimating the error on a finer mesh", count)
-    finer = factory(cell, float(job.frequency.max()), job.scan.points, job.tolerance)
+    told.start(f"estimating the error on a {other.kind} mesh", count)
+    engine = factory(other.cell, float(job.frequency.max()), job.scan.points, job.tolerance)
     done = 0
 
-    def solve(_cell: object, frequency: float, scan: object) -> Sweep:
+    def solve(frequency: float, scan: ScanPoints) -> Sweep:
         nonlocal done
-        sweep = finer.solve(frequency, scan)  # type: ignore[arg-type]
-        done += len(sweep.scan)
+        sweep = engine.solve(frequency, scan)
+        done += len(scan)
         told.advance(done)
         return sweep
 
-    return accuracy.estimate(result, cell, solve, (own, finer.unknowns))
+    return accuracy.estimate(result, other, solve, (own, engine.unknowns))
+
+
+def _elements(cell: UnitCell) -> int:
+    return len(cell.mesh.triangles) + len(cell.mesh.segments)
 
 
 def _none(failure: str) -> Accuracy:

@@ -92,7 +92,8 @@ def from_dataset(data: xarray.Dataset) -> Result:
         impedance=float(attributes["estimated_error_impedance_relative"]),
         errors=json.loads(attributes["estimated_error_of_limits"]),
         unknowns=int(attributes["unknowns"]),
-        finer_unknowns=int(attributes["unknowns_finer"]),
+        compared_unknowns=int(attributes["unknowns_compared"]),
+        compared=str(attributes["mesh_compared"]),
         note=str(attributes["estimated_error_note"]),
     )
     origin = Provenance(

@@ -91,9 +91,10 @@ def plan(cone: float = np.radians(60), step: float = 10.0, grid: int = 9) -> Sca
 def strip_mesh(size: float = 2.5e-3) -> Mesh:
     """A flat strip 25 mm by 2 mm along x at 14 mm height, and one wire post down to z = 0."""
     n = max(2, round(25e-3 / size))
+    bars = max(2, round(5e-3 / size))
     x = np.linspace(-12.5e-3, 12.5e-3, n + 1)
     strip = [(xi, yi, 14e-3) for xi in x for yi in (-1e-3, 1e-3)]
-    post = [(9e-3, 8e-3, z) for z in np.linspace(0, 10e-3, 3)]
+    post = [(9e-3, 8e-3, z) for z in np.linspace(0, 10e-3, bars + 1)]
     triangles = []
     for i in range(n):
         k = 2 * i
@@ -103,9 +104,9 @@ def strip_mesh(size: float = 2.5e-3) -> Mesh:
         points=np.array(strip + post),
         triangles=np.array(triangles),
         triangle_conductor=np.zeros(len(triangles), dtype=np.int64),
-        segments=np.array([[first, first + 1], [first + 1, first + 2]]),
-        segment_radius=np.full(2, 0.4e-3),
-        segment_conductor=np.ones(2, dtype=np.int64),
+        segments=first + np.column_stack([np.arange(bars), np.arange(1, bars + 1)]),
+        segment_radius=np.full(bars, 0.4e-3),
+        segment_conductor=np.ones(bars, dtype=np.int64),
         names=("arm", "post"),
         materials=(Material(sheet_resistance=0.1), Material()),
     )

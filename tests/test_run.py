@@ -25,7 +25,7 @@ class Sheets:
     def __init__(
         self, cell, _frequency, _scan, _tolerance, *, stop_at=None, break_at=None, spoil=None, shift=0.0
     ):
-        self.unknowns = len(cell.mesh.triangles)
+        self.cell, self.unknowns = cell, len(cell.mesh.triangles)
         self.loss = 0.0 if self.unknowns <= 20 else shift
         self.solved, self.stop_at, self.spoil = [], stop_at, spoil
 
@@ -141,7 +141,7 @@ def test_numbers_that_cannot_be_trusted_are_code_3(tmp_path, spoil, words):
     assert load_result(tmp_path / "out" / "result.nc").failure == outcome.message
 
 
-def test_error_estimate_is_three_times_the_change_on_the_finer_mesh(tmp_path):
+def test_error_estimate_is_the_extrapolated_change_on_the_finer_mesh(tmp_path):
     outcome, made = go(tmp_path, shift=2.0)
     estimate = outcome.result.accuracy
     assert made[1].unknowns > made[0].unknowns
@@ -153,7 +153,9 @@ def test_error_estimate_is_three_times_the_change_on_the_finer_mesh(tmp_path):
         fine = sheet_sweep(outcome.result.sweep.frequency[f], there, loss=2.0)
         change = np.abs(fine.scattering - outcome.result.sweep.scattering[f, points])
         largest = max(largest, change.max())
-    assert estimate.reflection == pytest.approx(3 * largest, rel=1e-9)
+    ratio = accuracy.element_size(sheet_job().cell) / accuracy.element_size(made[1].cell)
+    assert ratio >= 1.3 and estimate.factor == pytest.approx(1 / (1 - 1 / ratio))
+    assert estimate.reflection == pytest.approx(estimate.factor * largest, rel=1e-9)
     assert estimate.errors["reflection"] == estimate.reflection and estimate.errors["gain_drop"] > 0
 
 
@@ -168,17 +170,35 @@ def test_samples_hold_broadside_and_the_worst_points():
     assert worst[1] in samples[worst[0]]
 
 
-def test_a_mesh_that_cannot_be_refined_is_said(tmp_path):
+def test_a_mesh_that_cannot_be_changed_is_said(tmp_path):
     job = sheet_job(frequencies=1)
     outcome, _ = go(tmp_path, replace(job, remesh=lambda _factor: job.cell))
-    assert "cannot be refined" in outcome.result.accuracy.note and outcome.result.accuracy.unknowns == 20
+    assert "no other mesh" in outcome.result.accuracy.note and outcome.result.accuracy.unknowns == 20
     assert outcome.code == MET
 
 
-def test_a_finer_mesh_that_does_not_fit_into_memory_is_skipped(tmp_path, monkeypatch):
+def test_a_mesh_that_cannot_be_refined_is_compared_with_a_coarser_one(tmp_path):
+    """Error of the finer of two first-order solutions is the change over (r - 1)."""
+    job = sheet_job(frequencies=1)
+    outcome, made = go(tmp_path, replace(job, remesh=lambda factor: job.remesh(max(factor, 1.0))))
+    estimate = outcome.result.accuracy
+    ratio = accuracy.element_size(made[1].cell) / accuracy.element_size(job.cell)
+    assert estimate.compared == "coarser" and estimate.compared_unknowns < estimate.unknowns
+    assert estimate.factor == pytest.approx(1 / (ratio - 1))
+
+
+def test_another_mesh_that_does_not_fit_into_memory_is_skipped(tmp_path, monkeypatch):
     monkeypatch.setattr("scanward.cases.run.memory_free", lambda: 1.0)
     outcome, made = go(tmp_path, sheet_job(frequencies=1))
     assert "GB of memory" in outcome.result.accuracy.note and len(made) == 1
+
+
+@pytest.mark.parametrize("kind", ["finer", "coarser"])
+def test_extrapolation_is_exact_for_first_order_convergence(kind):
+    """CLOSED: q(h) = q0 + c h."""
+    h, ratio = 0.3, 1.6
+    other = h / ratio if kind == "finer" else h * ratio
+    assert accuracy.richardson(ratio, kind) * abs(h - other) == pytest.approx(h)
 
 
 def test_joining_unites_the_wave_tables():
