@@ -56,9 +56,7 @@ def choose_samples(result: Result) -> dict[int, list[int]]:
     size = np.abs(result.response.reflection)
     for port in np.flatnonzero(result.response.drive):
         if len(inside):
-            f, point = np.unravel_index(
-                np.argmax(np.nan_to_num(size[:, inside, port])), (last + 1, len(inside))
-            )
+            f, point = np.unravel_index(np.argmax(np.nan_to_num(size[:, inside, port])), (last + 1, len(inside)))
             add(int(f), int(inside[point]))
     for verdict in judge(result):
         if np.isfinite(verdict.theta):

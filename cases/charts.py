@@ -73,9 +73,7 @@ def scan_maps(result: Result) -> Drawing | None:
     )
 
 
-def _map(
-    figure: Any, axis: Any, result: Result, values: Floats, label: str, span: Any, contours: list[float]
-) -> None:
+def _map(figure: Any, axis: Any, result: Result, values: Floats, label: str, span: Any, contours: list[float]) -> None:
     plan = result.job.scan
     grid = np.where(plan.map_index >= 0, values[np.maximum(plan.map_index, 0)], np.nan)
     span = span if span[1] > span[0] else (span[0], span[0] + 1)
@@ -91,14 +89,14 @@ def _map(
     )
     finite = grid[np.isfinite(grid)]
     beyond = (bool(finite.size and finite.min() < span[0]), bool(finite.size and finite.max() > span[1]))
-    ends = {(False, False): "neither", (True, False): "min", (False, True): "max", (True, True): "both"}[
-        beyond
-    ]
+    ends = {(False, False): "neither", (True, False): "min", (False, True): "max", (True, True): "both"}[beyond]
     bar = figure.colorbar(picture, ax=axis, shrink=0.78, extend=ends, label=label)
     bar.outline.set_visible(False)
     for value in sorted(set(contours)):
         if finite.size and finite.min() < value < finite.max():
-            lines = axis.contour(plan.map_u, plan.map_v, grid.T, levels=[value], colors=ALARM, linewidths=1.4)
+            lines = axis.contour(
+                plan.map_u, plan.map_v, grid.T, levels=[value], colors=ALARM, linewidths=1.4, linestyles="solid"
+            )
             axis.clabel(lines, fmt=f"{value:g} dB", fontsize=7.5)
     turn = np.linspace(0, 2 * np.pi, 361)
     rim = np.sin(min(plan.cone, np.pi / 2))

@@ -34,9 +34,7 @@ BAD_INPUT, NOT_REACHED, CRASHED, INTERRUPTED = 2, 3, 70, 130
 
 
 @click.group(invoke_without_command=True, context_settings=CONTEXT, epilog=CODES)
-@click.option(
-    "--version", "show_version", is_flag=True, help="Print the version; with --verbose, of all parts."
-)
+@click.option("--version", "show_version", is_flag=True, help="Print the version; with --verbose, of all parts.")
 @click.option("--verbose", is_flag=True, help="With --version: the versions of Python and the packages used.")
 @click.pass_context
 def cli(context: click.Context, show_version: bool, verbose: bool) -> None:
@@ -60,11 +58,9 @@ set_option = click.option(
 @cli.command()
 @case_argument
 @set_option
-@click.option(
-    "--drawing", type=click.Path(dir_okay=False), help="Where to write the drawing of the cell (PNG)."
-)
+@click.option("--drawing", type=click.Path(dir_okay=False), help="Where to write the drawing of the cell (PNG).")
 def check(case: str, assignments: tuple[str, ...], drawing: str | None) -> int:
-    """Read CASE, tell what was understood, draw the cell; solve nothing.
+    """Read CASE, tell what was understood and what a run will take, draw the cell.
 
     CASE is a case file or the name of a ready-made case.
     """
@@ -94,9 +90,7 @@ def check(case: str, assignments: tuple[str, ...], drawing: str | None) -> int:
     "--currents", multiple=True, metavar="PLACE",
     help='Also write currents (VTK) at "FREQUENCY, THETA, PHI", e.g. "5.4 GHz, 30 deg, 0 deg".',
 )  # fmt: skip
-@click.option(
-    "--estimate/--no-estimate", default=True, help="Estimate the error on another mesh (default: do)."
-)
+@click.option("--estimate/--no-estimate", default=True, help="Estimate the error on another mesh (default: do).")
 @click.option("--quiet", is_flag=True, help="Print the verdict only.")
 def run(
     case: str,
@@ -173,9 +167,7 @@ def main(argv: Sequence[str] | None = None) -> int:
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="replace")  # type: ignore[union-attr]
     try:
-        code = cli.main(
-            args=list(sys.argv[1:] if argv is None else argv), prog_name="scanward", standalone_mode=False
-        )
+        code = cli.main(args=list(sys.argv[1:] if argv is None else argv), prog_name="scanward", standalone_mode=False)
     except InputError as fault:
         click.echo(f"scanward: {fault}", err=True)
         return BAD_INPUT
@@ -207,9 +199,7 @@ def _read(case: str, assignments: Sequence[str]) -> tuple[Job, Path]:
     for text in assignments:
         name, sign, value = text.partition("=")
         if not sign or not name.strip() or not value.strip():
-            raise InputError(
-                f"'{text}' sets nothing.", where="--set", allowed='NAME=VALUE such as arm="12.8 mm"'
-            )
+            raise InputError(f"'{text}' sets nothing.", where="--set", allowed='NAME=VALUE such as arm="12.8 mm"')
         overrides[name.strip()] = value.strip()
     path = find_case(case)
     return read_case(path, overrides or None), path

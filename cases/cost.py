@@ -1,37 +1,37 @@
 """What a run will take, before it is started: unknowns, time, memory.
 
-Time is scaled from two quick measurements on this machine: one factorisation (grows as unknowns cubed) and
-one pass over a complex matrix (everything else grows as unknowns squared). How many passes filling and
-assembling take was measured on flat strips of 1300 to 4400 unknowns; other shapes differ by a factor of
-two or three.
+One solution of the cell itself is timed when it is small, else one of a coarser mesh of it. Filling,
+assembling and stored memory grow as the square of the unknowns, factorisation as the cube; factorisation
+is timed apart.
 """
 
 from __future__ import annotations
 
 import time
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 
+from ..geometry.cell import UnitCell
+from ..geometry.errors import InputError
 from ..solver.basis import build_basis
+from ..solver.result import ScanPoints
 from .accuracy import RATIOS
-from .engine import WORKING_MATRICES
+from .engine import DirectEngine, EngineFactory, memory_needed
 from .job import Job
 
-PROBE = 500
-PASSES_ASSEMBLY = 40.0
-PASSES_FILL = 500.0
-STORED_BYTES = 130.0
-"""Bytes kept per pair of unknowns: powers of k^2 of two real matrices, and the near neighbours."""
-POINT_OVERHEAD = 0.012
-"""Seconds per solution that do not depend on the number of unknowns."""
+LARGEST_TRIAL = 600
+"""Unknowns of the largest cell that is solved as a trial: a few seconds."""
 SAMPLES = 10
 
 
 @dataclass(frozen=True)
 class Cost:
-    """Unknowns, number of solutions, seconds for the solutions and for the error estimate, bytes at the
-    peak."""
+    """Unknowns, number of solutions, seconds for the solutions and for the error estimate, bytes at the peak.
+
+    `trial`: unknowns of the solution that was timed; the further below `unknowns`, the rougher the figures.
+    """
 
     unknowns: int
     solutions: int
@@ -39,55 +39,96 @@ class Cost:
     estimate_seconds: float
     memory: float
     estimate_memory: float
+    trial: int
 
 
-def estimate_cost(job: Job) -> Cost:
-    """Expected cost of `run_case` for `job`; takes a fraction of a second."""
-    n = build_basis(job.cell.mesh, job.cell.lattice, ground=job.cell.ground).n
-    finer = round(n * _growth(job))
-    factor, one_pass = _probe()
-    solutions = len(job.frequency) * len(job.scan.points)
+@dataclass(frozen=True)
+class Trial:
+    """One timed solution: seconds to fill, to assemble one point, to factorise; bytes stored; unknowns."""
+
+    unknowns: int
+    fill: float
+    assemble: float
+    factor: float
+    stored: float
+
+    def seconds(self, unknowns: int, solutions: int) -> float:
+        """Expected time of `solutions` of a cell of so many unknowns."""
+        r = unknowns / self.unknowns
+        return self.fill * r**2 + solutions * (self.assemble * r**2 + self.factor * r**3)
+
+    def memory(self, unknowns: int) -> float:
+        """Expected peak in bytes."""
+        return memory_needed(unknowns, self.stored * (unknowns / self.unknowns) ** 2)
+
+
+def estimate_cost(job: Job, engine: EngineFactory = DirectEngine) -> Cost:
+    """Expected cost of `run_case` for `job`; takes a few seconds."""
+    n = count_unknowns(job.cell)
+    trial = run_trial(job, _trial_cell(job, n), engine)
+    finer, solutions = round(n * _growth(job)), len(job.frequency) * len(job.scan.points)
     return Cost(
         unknowns=n,
         solutions=solutions,
-        seconds=_fill(n, one_pass) + solutions * _point(n, factor, one_pass),
-        estimate_seconds=_fill(finer, one_pass) + SAMPLES * _point(finer, factor, one_pass),
-        memory=_memory(n),
-        estimate_memory=_memory(finer),
+        seconds=trial.seconds(n, solutions),
+        estimate_seconds=trial.seconds(finer, SAMPLES),
+        memory=trial.memory(n),
+        estimate_memory=trial.memory(finer),
+        trial=trial.unknowns,
     )
+
+
+def count_unknowns(cell: UnitCell) -> int:
+    """Number of current basis functions of a cell."""
+    return build_basis(cell.mesh, cell.lattice, ground=cell.ground).n
+
+
+def run_trial(job: Job, cell: UnitCell, engine: EngineFactory) -> Trial:
+    """Time one solution of `cell` at the top frequency and the direction farthest from broadside."""
+    frequency, scan = float(job.frequency.max()), job.scan.points
+    begun = time.perf_counter()
+    made = engine(cell, frequency, scan, job.tolerance)
+    filled = time.perf_counter() - begun
+    far = int(np.argmax(np.hypot(scan.u, scan.v)))
+    points = [far, far, far]  # the first one also pays for what is kept between points
+    begun = time.perf_counter()
+    made.solve(frequency, ScanPoints(scan.u[points], scan.v[points], scan.phi[points]))
+    point = (time.perf_counter() - begun) / len(points)
+    factor = min(_factor_time(made.unknowns), point)
+    return Trial(made.unknowns, filled, point - factor, factor, made.stored_bytes)
+
+
+def _trial_cell(job: Job, unknowns: int) -> UnitCell:
+    """The job's own cell when small, else the finest mesh of it that is; the coarsest if none is."""
+    cell: UnitCell = job.cell
+    if unknowns <= LARGEST_TRIAL or not callable(job.remesh):
+        return cell
+    for coarser in (1.5, 2.0, 3.0, 4.0, 6.0, 8.0):
+        try:
+            cell = job.remesh(coarser)  # type: ignore[assignment]
+        except InputError:
+            break
+        if count_unknowns(cell) <= LARGEST_TRIAL:
+            break
+    return cell
 
 
 def _growth(job: Job) -> float:
     """How many times more unknowns the finer mesh has: once per dimension of the elements."""
     triangles, segments = len(job.cell.mesh.triangles), len(job.cell.mesh.segments)
-    total = max(triangles + segments, 1)
-    return (triangles * RATIOS[0] ** 2 + segments * RATIOS[0]) / total if total else 1.0
+    return (triangles * RATIOS[0] ** 2 + segments * RATIOS[0]) / max(triangles + segments, 1)
 
 
-def _memory(n: int) -> float:
-    return (STORED_BYTES + 16.0 * WORKING_MATRICES) * n**2
-
-
-def _fill(n: int, one_pass: float) -> float:
-    return PASSES_FILL * one_pass * n**2
-
-
-def _point(n: int, factor: float, one_pass: float) -> float:
-    return POINT_OVERHEAD + factor * n**3 + PASSES_ASSEMBLY * one_pass * n**2
-
-
-def _probe() -> tuple[float, float]:
-    """Seconds per unknown cubed of a factorisation, and per matrix element of one complex pass."""
+def _factor_time(n: int) -> float:
+    """Seconds of one factorisation, the best of three."""
     from scipy.linalg import lu_factor
 
     random = np.random.default_rng(1)
-    matrix = random.normal(size=(PROBE, PROBE)) + 1j * random.normal(size=(PROBE, PROBE))
-    factor = min(_timed(lambda: lu_factor(matrix, check_finite=False)) for _ in range(3))
-    one_pass = min(_timed(lambda: matrix * 1.5j + matrix) for _ in range(3))
-    return factor / PROBE**3, one_pass / PROBE**2
+    matrix = random.normal(size=(n, n)) + 1j * random.normal(size=(n, n))
+    return min(_timed(lambda: lu_factor(matrix, check_finite=False)) for _ in range(3))
 
 
-def _timed(call: object) -> float:
+def _timed(call: Callable[[], object]) -> float:
     begun = time.perf_counter()
-    call()  # type: ignore[operator]
+    call()
     return time.perf_counter() - begun

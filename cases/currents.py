@@ -32,9 +32,7 @@ def parse_place(text: str) -> tuple[float, float, float]:
     frequency = quantities.value(parts[0], "frequency", where)
     theta, phi = (quantities.value(part, "angle", where) for part in parts[1:])
     if frequency <= 0 or abs(theta) >= np.pi / 2:
-        raise InputError(
-            f"'{text}' lies outside what can be solved.", where=where, allowed="theta below 90 deg"
-        )
+        raise InputError(f"'{text}' lies outside what can be solved.", where=where, allowed="theta below 90 deg")
     return frequency, theta, phi
 
 

@@ -79,11 +79,11 @@ def gain_cuts(result: Result) -> Drawing | None:
         for column, axis in enumerate(axes[0]):
             index, theta = result.job.scan.planes[column][1], result.job.scan.plane_theta[column]
             for f in (chosen[0], chosen[-1]):
-                axis.plot(
-                    np.degrees(theta), ceiling[f, index], color=MUTED, linewidth=1, linestyle=(0, (4, 2))
-                )
+                axis.plot(np.degrees(theta), ceiling[f, index], color=MUTED, linewidth=1, linestyle=(0, (4, 2)))
         _lines(result, axes[0], gain, chosen, [])
-        _note(axes[0, 0], "dashed: ideal cell, 4πS cosθ/λ²" + (", band edges" if len(chosen) > 1 else ""))
+        edges = ", band edges" if len(chosen) > 1 else ""
+        wrap = "\n" if axes.shape[1] > 2 else " "
+        _note(axes[0, 0], f"dashed: ideal cell,{wrap}4πS cosθ/λ²{edges}")
         data = render(figure)
     return Drawing(
         "gain-cuts",

@@ -72,9 +72,7 @@ def _positions(axis: Any, job: Job) -> None:
     axis.plot(*corner.T, color=HUES[0], linewidth=0.8)
     axis.plot(*spots.T, "o", color=INK, markersize=3.5, linestyle="none")
     for name, vector in (("a", a), ("b", b)):
-        axis.annotate(
-            "", vector, (0, 0), arrowprops={"arrowstyle": "-|>", "color": HUES[0], "linewidth": 1.6}
-        )
+        axis.annotate("", vector, (0, 0), arrowprops={"arrowstyle": "-|>", "color": HUES[0], "linewidth": 1.6})
         axis.annotate(
             f"{name}: {np.linalg.norm(vector):.4g} mm",
             vector,
@@ -137,9 +135,7 @@ def _lobes(axis: Any, job: Job) -> None:
     free = lattice.grating_lobe_free_cone(k)
     axis.set(xlim=(-reach, reach), ylim=(-reach, reach), aspect="equal", xlabel="u", ylabel="v")
     axis.set_title(
-        "No grating lobe at any scan angle"
-        if free > np.pi / 2 - 1e-9
-        else f"Free of grating lobes to {arc(free)}"
+        "No grating lobe at any scan angle" if free > np.pi / 2 - 1e-9 else f"Free of grating lobes to {arc(free)}"
     )
 
 
@@ -150,16 +146,12 @@ def _perspective(axis: Any, cell: UnitCell) -> None:
     base = _base(cell) * 1e3
     outline = np.array([[*corner, base] for corner in _cell_corners(cell) * 1e3])
     face = "#dfe3e6" if cell.ground else "none"
-    axis.add_collection3d(
-        Poly3DCollection([outline], facecolor=face, edgecolor=MUTED, linewidth=0.8, alpha=0.6)
-    )
+    axis.add_collection3d(Poly3DCollection([outline], facecolor=face, edgecolor=MUTED, linewidth=0.8, alpha=0.6))
     for c in range(len(mesh.names)):
         own = mesh.triangles[mesh.triangle_conductor == c]
         if len(own):
             axis.add_collection3d(
-                Poly3DCollection(
-                    points[own], facecolor=HUES[c % 6], edgecolor=INK, linewidth=0.25, alpha=0.85
-                )
+                Poly3DCollection(points[own], facecolor=HUES[c % 6], edgecolor=INK, linewidth=0.25, alpha=0.85)
             )
         wires = mesh.segments[mesh.segment_conductor == c]
         if len(wires):
@@ -196,32 +188,23 @@ def _from_above(axis: Any, cell: UnitCell) -> None:
             colour = HUES[c % 6]
             if len(own):
                 axis.add_collection(
-                    PolyCollection(
-                        points[own] + shift, facecolor=colour, edgecolor=colour, linewidth=0.2, alpha=alpha
-                    )
+                    PolyCollection(points[own] + shift, facecolor=colour, edgecolor=colour, linewidth=0.2, alpha=alpha)
                 )
             wires = mesh.segments[mesh.segment_conductor == c]
             if len(wires):
-                axis.add_collection(
-                    LineCollection(points[wires] + shift, color=colour, linewidth=2, alpha=alpha)
-                )
+                axis.add_collection(LineCollection(points[wires] + shift, color=colour, linewidth=2, alpha=alpha))
                 ends = points[wires].reshape(-1, 2) + shift
                 axis.plot(*ends.T, "o", color=colour, markersize=2.5, alpha=alpha, linestyle="none")
     for gaps, colour, marker in _markers(cell):
-        axis.plot(
-            *(gaps[:, :2].T * 1e3), marker=marker, color=colour, markersize=5, linestyle="none", zorder=10
-        )
+        axis.plot(*(gaps[:, :2].T * 1e3), marker=marker, color=colour, markersize=5, linestyle="none", zorder=10)
+    spots: dict[tuple[float, ...], list[str]] = {}
     for port in cell.ports:
+        spots.setdefault(tuple(np.round(port.gap.centre[:2] * 1e3, 3)), []).append(port.name)
+    for spot, names in spots.items():
         axis.annotate(
-            port.name,
-            port.gap.centre[:2] * 1e3,
-            color=ALARM,
-            fontsize=8,
-            xytext=(4, 5),
-            textcoords="offset points",
-            zorder=11,
+            ", ".join(names), spot, color=ALARM, fontsize=8, xytext=(4, 5), textcoords="offset points", zorder=11,
             bbox={"facecolor": "white", "edgecolor": "none", "alpha": 0.75, "pad": 0.5},
-        )
+        )  # fmt: skip
     reach = np.ptp(corners, axis=0).max() * 0.95
     middle = corners.mean(axis=0)
     axis.set(
@@ -234,13 +217,9 @@ def _from_above(axis: Any, cell: UnitCell) -> None:
     axis.set_title("From above, with neighbours")
     axis.grid(False)
     used = [
-        c
-        for c in range(len(mesh.names))
-        if (mesh.triangle_conductor == c).any() or (mesh.segment_conductor == c).any()
+        c for c in range(len(mesh.names)) if (mesh.triangle_conductor == c).any() or (mesh.segment_conductor == c).any()
     ]
-    handles = [
-        axis.plot([], [], "s", color=HUES[c % 6], markersize=6, label=mesh.names[c])[0] for c in used[:8]
-    ]
+    handles = [axis.plot([], [], "s", color=HUES[c % 6], markersize=6, label=mesh.names[c])[0] for c in used[:8]]
     if handles:
         axis.legend(
             handles=handles,

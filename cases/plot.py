@@ -164,9 +164,7 @@ def label_ends(axes: Axes, entries: Sequence[tuple[float, str, Any]], size: floa
     assert figure is not None
     inches = axes.get_position().height * figure.get_size_inches()[1]
     step = (size * 1.25 / 72) / max(inches, 0.5)
-    wanted = np.array(
-        [(np.clip(y, low, high) - low) / (high - low) if np.isfinite(y) else 0 for y, _, _ in entries]
-    )
+    wanted = np.array([(np.clip(y, low, high) - low) / (high - low) if np.isfinite(y) else 0 for y, _, _ in entries])
     order = np.argsort(wanted)
     placed = spread(wanted[order], step)
     placed += max(0.0, -placed[0])

@@ -39,8 +39,7 @@ def read_record(text: str) -> dict[str, Any]:
     """The record with ports, loads, materials, limits and expectations turned back into their classes."""
     record = json.loads(text)
     record["ports"] = tuple(
-        Port(port["name"], _gap(port["gap"]), port["resistance"], complex(*port["drive"]))
-        for port in record["ports"]
+        Port(port["name"], _gap(port["gap"]), port["resistance"], complex(*port["drive"])) for port in record["ports"]
     )
     record["loads"] = tuple(Load(**{**load, "gap": _gap(load["gap"])}) for load in record["loads"])
     record["materials"] = tuple(Material(**material) for material in record["materials"])

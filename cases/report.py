@@ -123,6 +123,9 @@ def error_text(verdict: Verdict) -> str:
     """Estimated error of the worst value in words."""
     if not np.isfinite(verdict.error):
         return "unknown" if np.isnan(verdict.error) and np.isfinite(verdict.worst) else ""
+    least = 0.01 if verdict.unit else 0.0001
+    if verdict.error < least:
+        return f"< {number(least, verdict.unit)}"
     return f"± {number(verdict.error, verdict.unit)}"
 
 
@@ -177,8 +180,7 @@ def _comparison_row(item: Any) -> dict[str, Any]:
     port = f", port {wanted.port}" if wanted.port else ""
     return {
         "quantity": wanted.quantity.replace("_", " "),
-        "place": f"theta {degrees(wanted.theta)}, phi {degrees(wanted.phi)}, "
-        f"{wanted.frequency / 1e9:.6g} GHz{port}",
+        "place": f"theta {degrees(wanted.theta)}, phi {degrees(wanted.phi)}, {wanted.frequency / 1e9:.6g} GHz{port}",
         "expected": f"{wanted.value:g} ± {wanted.tolerance:g} {item.unit}",
         "computed": f"{item.computed:.4g} {item.unit}" if np.isfinite(item.computed) else "not in this run",
         "agrees": item.agrees,
@@ -223,8 +225,8 @@ def complex_text(value: complex) -> str:
 def _checks(result: Result) -> list[tuple[str, str]]:
     balance = np.abs(result.response.balance)
     f, s = np.unravel_index(np.argmax(np.nan_to_num(balance, nan=np.inf)), balance.shape)
-    scan = result.sweep.scan
-    place = f"{result.sweep.frequency[f] / 1e9:.6g} GHz, u = {scan.u[s]:.4f}, v = {scan.v[s]:.4f}"
+    u, v = (round(float(part[s]), 4) + 0.0 for part in (result.sweep.scan.u, result.sweep.scan.v))
+    place = f"{result.sweep.frequency[f] / 1e9:.6g} GHz, u = {u:g}, v = {v:g}"
     return [
         ("Requested tolerance of the lattice sums", f"{result.job.tolerance:.1e}"),
         ("Largest power-balance error, of available power", f"{balance[f, s]:.1e} at {place}"),
@@ -263,9 +265,7 @@ def _ports(result: Result) -> list[dict[str, str]]:
         {
             "name": port.name,
             "resistance": f"{port.resistance:g} ohm",
-            "drive": f"{abs(port.drive):.4g} at {degrees(float(np.angle(port.drive)))}"
-            if port.drive
-            else "not driven",
+            "drive": f"{abs(port.drive):.4g} at {degrees(float(np.angle(port.drive)))}" if port.drive else "not driven",
             "gap": f"{port.gap.width * 1e3:.4g} mm in a {'wire' if port.gap.kind == 'wire' else 'sheet'}",
         }
         for port in result.job.cell.ports

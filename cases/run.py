@@ -194,9 +194,7 @@ def _estimate(result: Result, solver: _Lazy, told: Progress, factory: EngineFact
     return Accuracy(unknowns=own, note=reason)
 
 
-def _compared(
-    result: Result, other: accuracy.Comparison, own: int, told: Progress, factory: EngineFactory
-) -> Accuracy:
+def _compared(result: Result, other: accuracy.Comparison, own: int, told: Progress, factory: EngineFactory) -> Accuracy:
     job = result.job
     count = sum(len(points) for points in accuracy.choose_samples(result).values())
     told.start(f"estimating the error on a {other.kind} mesh", count)

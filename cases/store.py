@@ -56,9 +56,7 @@ def load_result(path: Path) -> Result:
         raise InputError(f"'{path}' cannot be read as a result file: {error}.", where=str(path)) from None
     given = data.attrs.get("scanward_format")
     if given != FORMAT:
-        raise InputError(
-            f"result format {given} is not known here.", where=str(path), allowed=f"format {FORMAT}"
-        )
+        raise InputError(f"result format {given} is not known here.", where=str(path), allowed=f"format {FORMAT}")
     return from_dataset(data)
 
 
@@ -127,9 +125,7 @@ def _job(value: dict[str, Any], record: dict[str, Any], scan: ScanPoints) -> Job
         text=record["text"],
         cell=UnitCell(lattice, mesh, record["ports"], record["loads"], bool(record["ground"])),
         frequency=value["frequency"],
-        scan=ScanPlan(
-            scan, planes, plane_theta, value["map_u"], value["map_v"], value["map_index"], record["cone"]
-        ),
+        scan=ScanPlan(scan, planes, plane_theta, value["map_u"], value["map_v"], value["map_index"], record["cone"]),
         limits=record["limits"],
         tolerance=record["tolerance"],
         co_polar=record["co_polar"],

@@ -42,9 +42,7 @@ def write_touchstone(
     reference = _reference(result.sweep.reference, resistance, result.port_names)
     frequency, ports = result.sweep.frequency, len(result.port_names)
     if ports > MOST_PORTS or not ports:
-        raise InputError(
-            f"a Touchstone file for {ports} ports cannot be named.", allowed=f"1 to {MOST_PORTS} ports"
-        )
+        raise InputError(f"a Touchstone file for {ports} ports cannot be named.", allowed=f"1 to {MOST_PORTS} ports")
     if np.any(np.diff(frequency) <= 0) or np.any(frequency < 0):
         raise InputError("Touchstone files need rising frequencies.", where="[band]")
     scattering = renormalise(result.sweep.scattering, result.sweep.reference, reference)
@@ -87,9 +85,7 @@ def file_name(title: str, scan: int, theta: float, phi: float, ports: int) -> st
 def _reference(given: Floats, wanted: float | None, names: Sequence[str]) -> float:
     if wanted is not None:
         if not (np.isfinite(wanted) and wanted > 0):
-            raise InputError(
-                f"a reference resistance of {wanted} ohm makes no sense.", allowed="a positive number"
-            )
+            raise InputError(f"a reference resistance of {wanted} ohm makes no sense.", allowed="a positive number")
         return float(wanted)
     if len(given) and np.all(given == given[0]):
         return float(given[0])
@@ -119,9 +115,7 @@ def _write_one(path: Path, frequency: Floats, scattering: Complexes, reference: 
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
         import skrf
-    network = skrf.Network(
-        f=frequency, f_unit="Hz", s=scattering, z0=reference, name=path.stem, comments=comments
-    )
+    network = skrf.Network(f=frequency, f_unit="Hz", s=scattering, z0=reference, name=path.stem, comments=comments)
     network.write_touchstone(
         filename=path.name, dir=str(path.parent), form="ri", skrf_comment=False,
         format_spec_A="{:.12e}", format_spec_B="{:.12e}", format_spec_freq="{:.12e}",
