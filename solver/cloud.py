@@ -34,19 +34,23 @@ class Cloud:
     element : (n_q,) element of each point: triangles first, then segments, then fans
     current : three sparse (n_q, n): x, y, z component of every function times the quadrature weight
     charge : sparse (n_q, n): surface divergence times the weight
+    n : number of functions
     """
 
     points: Floats
     element: NDArray[np.int64]
     current: tuple[sparse.csr_matrix, ...]
     charge: sparse.csr_matrix
+    n: int
 
 
 def triangle_weights(triangles: Floats, n: int = TRIANGLE_POINTS) -> tuple[Floats, Floats, Floats]:
     """Points (n_t, q, 3), weighted shapes (n_t, q, 3 shapes, 3) and weighted divergences (n_t, q, 3 shapes)."""
     nodes, weights = quadrature.triangle(n)
     points = np.einsum("qa,tac->tqc", nodes, triangles)
-    vector = 0.5 * (points[:, :, None, :] - triangles[:, None]) * weights[None, :, None, None]  # the area cancels
+    vector = (
+        0.5 * (points[:, :, None, :] - triangles[:, None]) * weights[None, :, None, None]
+    )  # the area cancels
     return points, vector, np.broadcast_to(weights[None, :, None], (*points.shape[:2], 3))
 
 
@@ -91,7 +95,11 @@ def build_cloud(basis: Basis) -> Cloud:
         rows.append((point_start + e * q + i).ravel())
         cols.append((shape_start + e * shapes + a).ravel())
         elements.append(element_start + np.repeat(np.arange(n), q))
-        point_start, shape_start, element_start = point_start + n * q, shape_start + n * shapes, element_start + n
+        point_start, shape_start, element_start = (
+            point_start + n * q,
+            shape_start + n * shapes,
+            element_start + n,
+        )
     index = (np.concatenate(rows), np.concatenate(cols))
     vector = np.concatenate([part[1].reshape(-1, 3) for part in parts])
     charge = np.concatenate([part[2].ravel() for part in parts])
@@ -100,6 +108,10 @@ def build_cloud(basis: Basis) -> Cloud:
     return Cloud(
         np.concatenate([part[0].reshape(-1, 3) for part in parts]),
         np.concatenate(elements),
-        tuple(sparse.csr_matrix(sparse.csr_matrix((vector[:, c], index), shape=size) @ to_function) for c in range(3)),
+        tuple(
+            sparse.csr_matrix(sparse.csr_matrix((vector[:, c], index), shape=size) @ to_function)
+            for c in range(3)
+        ),
         sparse.csr_matrix(sparse.csr_matrix((charge, index), shape=size) @ to_function),
+        basis.n,
     )

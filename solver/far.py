@@ -46,7 +46,10 @@ def choose_layers(cloud: Cloud, split: Split, tolerance: float) -> list[Layer]:
     if len(heights) > MAX_EXACT_LEVELS:
         flat, heights = np.zeros_like(flat), heights[:0]
     layers = [
-        Layer(np.array([h]), sparse.csr_matrix((flat & (np.abs(z - h) <= 2e-9 / split.splitting)).astype(float)[:, None]))
+        Layer(
+            np.array([h]),
+            sparse.csr_matrix((flat & (np.abs(z - h) <= 2e-9 / split.splitting)).astype(float)[:, None]),
+        )
         for h in heights
     ]
     if not flat.all():
@@ -131,7 +134,7 @@ class FarPart:
 
     def __init__(self, cloud: Cloud, lattice: Lattice, split: Split, tolerance: float, ground: bool):
         self.lattice, self.split, self.ground = lattice, split, ground
-        self.n = cloud.charge.shape[1]
+        self.n = cloud.n
         self.points = cloud.points
         self.layers = choose_layers(cloud, split, tolerance)
         components = [*cloud.current, cloud.charge]
@@ -180,7 +183,9 @@ class FarPart:
                         matrix[np.ix_(rows, columns)] += product
         return matrix
 
-    def level_kernels(self, k: float, square: Floats, z: Floats, other: Floats) -> tuple[Complexes, Complexes]:
+    def level_kernels(
+        self, k: float, square: Floats, z: Floats, other: Floats
+    ) -> tuple[Complexes, Complexes]:
         """D between levels, direct and through the ground, each (n_mode, n_level, n_level)."""
         square = square[:, None, None]
         direct = far_kernel(k, square, z[:, None] - other, self.split, self.lattice.area)

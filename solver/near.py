@@ -38,8 +38,8 @@ class NearBlock:
 def build_near(basis: Basis, cloud: Cloud, lattice: Lattice, split: Split, ground: bool) -> list[NearBlock]:
     """Fill the near part. Cells of one half-plane only; the matrix at -m is the transpose of that at m."""
     corrections = build_corrections(basis, lattice, ground)
-    extent = np.linalg.norm(np.ptp(cloud.points[:, :2], axis=0))
-    cells = {tuple(map(int, m)) for m in half_cells(lattice, split.near_radius + extent)} | set(corrections)
+    extent = float(np.linalg.norm(np.ptp(cloud.points[:, :2], axis=0)))
+    cells = {(int(p), int(q)) for p, q in half_cells(lattice, split.near_radius + extent)} | set(corrections)
     tiles = _tiles(cloud.points, np.arange(len(cloud.points)))
     blocks = []
     for cell in sorted(cells, key=lambda m: (m != (0, 0), m)):
@@ -85,32 +85,40 @@ def _point_sums(
 
     Without displacement the kernel is symmetric: only tiles at or after the observers' own are visited.
     """
-    n = cloud.charge.shape[1]
+    n = cloud.n
     symmetric = not shift.any()
     # (observing function, power, source function) while summing: adding a tile then touches whole rows
     current, charge = np.zeros((n, split.powers, n)), np.zeros((n, split.powers, n))
-    weights = [m.T.tocsr() for m in (*cloud.current, cloud.charge)]
+    weights = [sparse.csr_matrix(m.T) for m in (*cloud.current, cloud.charge)]
     boxes = np.array([[cloud.points[t].min(axis=0), cloud.points[t].max(axis=0)] for t in tiles])
     for i, tile in enumerate(tiles):
         gap = np.maximum(boxes[:, 0] + shift - boxes[i, 1], boxes[i, 0] - boxes[:, 1] - shift).clip(min=0)
         if ground:
             gap[:, 2] = 0.0
-        near = [j for j in np.flatnonzero((gap**2).sum(axis=1) < split.near_radius**2) if j >= i or not symmetric]
+        near = [
+            j for j in np.flatnonzero((gap**2).sum(axis=1) < split.near_radius**2) if j >= i or not symmetric
+        ]
         if not near:
             continue
         sources = np.concatenate([tiles[j] for j in near])
         own = len(tile) if symmetric else 0  # the tile with itself comes first and is halved
         kernels = _kernels(cloud.points[tile], cloud.points[sources] + shift, split, ground, own)
         _add_tile(weights, tile, sources, kernels, current, charge)
-    result = tuple(np.ascontiguousarray(part.transpose(1, 0, 2)) for part in (current, charge))
+    return _by_power(current, symmetric), _by_power(charge, symmetric)
+
+
+def _by_power(sums: Floats, symmetric: bool) -> Floats:
+    """(observer, power, source) -> (power, observer, source), completed by symmetry where only half was summed."""
+    result = np.ascontiguousarray(sums.transpose(1, 0, 2))
     if symmetric:
-        for part in result:
-            for matrix in part:
-                matrix += matrix.T.copy()
+        for matrix in result:
+            matrix += matrix.T.copy()
     return result
 
 
-def _kernels(observers: Floats, sources: Floats, split: Split, ground: bool, own: int) -> tuple[Floats, Floats]:
+def _kernels(
+    observers: Floats, sources: Floats, split: Split, ground: bool, own: int
+) -> tuple[Floats, Floats]:
     """Near kernels (n_source, powers, n_observer) for horizontal currents and charges, and for vertical currents."""
     direct = _kernel(observers, sources, split)
     direct[:own] *= 0.5
@@ -130,16 +138,27 @@ def _kernel(observers: Floats, sources: Floats, split: Split) -> Floats:
     return np.stack(near_kernels(distance, split), axis=1)
 
 
-def _add_tile(weights, tile, sources, kernels, current, charge) -> None:  # noqa: ANN001
+def _add_tile(
+    weights: list[sparse.csr_matrix],
+    tile: Ints,
+    sources: Ints,
+    kernels: tuple[Floats, Floats],
+    current: Floats,
+    charge: Floats,
+) -> None:
     """Weigh the kernels of one tile with the functions on both sides and add them to the sums."""
-    n, powers, _ = current.shape
-    for components, kernel, target in (((0, 1), kernels[0], current), ((2,), kernels[1], current), ((3,), kernels[0], charge)):
-        left = [weights[c][:, tile] for c in components]
-        rows = np.flatnonzero(sum(np.diff(m.indptr) for m in left))
-        for m, c in zip(left, components, strict=True):
-            right = weights[c][:, sources]
-            if not m.nnz or not right.nnz:
-                continue
-            inner = (right @ kernel.reshape(len(sources), -1)).reshape(n, powers, len(tile))
-            inner = np.ascontiguousarray(inner.transpose(2, 1, 0)).reshape(len(tile), -1)
-            target[rows] += (m[rows] @ inner).reshape(len(rows), powers, n)
+    powers = current.shape[1]
+    for component, weight in enumerate(weights):
+        left, right = weight[:, tile], weight[:, sources]
+        rows, columns = (np.flatnonzero(np.diff(m.indptr)) for m in (left, right))
+        if not len(rows) or not len(columns):
+            continue
+        kernel = kernels[1 if component == 2 else 0]
+        inner = (right[columns] @ kernel.reshape(len(sources), -1)).reshape(len(columns), powers, len(tile))
+        inner = np.ascontiguousarray(inner.transpose(2, 1, 0)).reshape(len(tile), -1)
+        outer = (left[rows] @ inner).reshape(len(rows), powers, len(columns))
+        target = charge if component == 3 else current
+        if len(columns) == target.shape[2]:
+            target[rows] += outer
+        else:
+            target[np.ix_(rows, np.arange(powers), columns)] += outer

@@ -35,12 +35,16 @@ class PeriodicOperator:
     splitting : overrides the splitting parameter E, 1/m (tests)
     """
 
-    def __init__(self, cell: UnitCell, k_max: float, tolerance: float = 1e-6, *, splitting: float | None = None):
+    def __init__(
+        self, cell: UnitCell, k_max: float, tolerance: float = 1e-6, *, splitting: float | None = None
+    ):
         self.cell, self.k_max, self.tolerance = cell, k_max, tolerance
         self.lattice = cell.lattice.reduced
         self.basis = build_basis(cell.mesh, cell.lattice, ground=cell.ground)
         self.cloud = build_cloud(self.basis)
-        self.split = choose_split(self.lattice.area, k_max, tolerance, splitting, tall=tall_fraction(self.cloud))
+        self.split = choose_split(
+            self.lattice.area, k_max, tolerance, splitting, tall=tall_fraction(self.cloud)
+        )
         self.near = build_near(self.basis, self.cloud, self.lattice, self.split, cell.ground)
         self.far = FarPart(self.cloud, self.lattice, self.split, tolerance, cell.ground)
         self._combined: tuple[float, list[Floats]] | None = None
@@ -58,7 +62,9 @@ class PeriodicOperator:
     def matrix(self, k: float, kt: Floats) -> Complexes:
         """Z(k, kt) in ohm, (n, n), for perfect conductors; k in rad/m (real, <= k_max), kt (2,) rad/m."""
         if not 0 < k <= self.k_max * (1 + 1e-9):
-            raise ValueError(f"k = {k:g} rad/m lies outside (0, {self.k_max:g}], the range the near part was filled for")
+            raise ValueError(
+                f"k = {k:g} rad/m lies outside (0, {self.k_max:g}], the range the near part was filled for"
+            )
         kt = np.asarray(kt, dtype=float)
         z = self.far.matrix(k, kt, 1j * k * ETA, ETA / (1j * k))
         for block, reactance in zip(self.near, self._at(k), strict=True):

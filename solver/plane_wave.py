@@ -91,7 +91,9 @@ def _respond(
     amplitude, propagating = radiation(operator.cloud, cell.lattice, cell.ground, k, kt, phi, table)
     out = amplitude @ scattered
     for polarisation in (0, 1):  # what is there without the conductors
-        out[table.index((0, 0), 1 if cell.ground else -1, polarisation), polarisation] += -1.0 if cell.ground else 1.0
+        out[table.index((0, 0), 1 if cell.ground else -1, polarisation), polarisation] += (
+            -1.0 if cell.ground else 1.0
+        )
     lost = np.array([np.diag(m).real for m in absorbed(absorbing, scattered)]).reshape(-1, 2)
     return out * propagating[:, None], np.sqrt(solver.reference)[:, None] * current, lost
 

@@ -143,5 +143,15 @@ def solve_sweep(
             if progress:
                 progress(f * len(scan) + s + 1, shape[0] * shape[1])
     return Sweep(
-        frequency, scan, solver.reference, impedance, scattering, waves, table, loss, solver.loss_names, residual, kept
+        frequency,
+        scan,
+        solver.reference,
+        impedance,
+        scattering,
+        waves,
+        table,
+        loss,
+        solver.loss_names,
+        residual,
+        kept,
     )
