@@ -62,25 +62,30 @@ def choose_split(
     return Split(e, powers, x / e, 2 * e * x)
 
 
-def near_kernels(distance: Floats, split: Split) -> list[Floats]:
-    """K_p(R), p = 0..powers-1, each the shape of `distance`.
+def near_kernels(distance: Floats, split: Split, out: Floats | None = None) -> Floats:
+    """K_p(R), p = 0..powers-1, shape (powers, *distance.shape), or written into `out` of that shape.
 
     At R = 0 the static singularity ``1/(4 pi R)`` is left out, so the value is the limit of the smooth rest.
     """
     e = split.splitting
     scale = 1 / (2 * np.pi**1.5)
+    kernels = np.empty((split.powers, *distance.shape)) if out is None else out
     zero = distance == 0
-    r = np.where(zero, 1.0, distance) if zero.any() else distance
-    x = r * e
+    x = np.where(zero, 1.0, distance * e)
     square = x * x
     bell = np.exp(-square)
-    integral = (np.sqrt(np.pi) / 2) * erfc(x) / x  # I_0 / E
+    integral = erfc(x)
+    integral *= np.sqrt(np.pi) / 2
+    integral /= x  # I_0 / E
     if zero.any():
         integral[zero], square[zero], bell[zero] = -1.0, 0.0, 1.0
-    kernels = [scale * e * integral]
+    square *= 2
+    np.multiply(integral, scale * e, out=kernels[0])
     for p in range(1, split.powers):
-        integral = (bell - 2 * square * integral) / (2 * p - 1)  # I_p E^(2p-1)
-        kernels.append((scale * e ** (1 - 2 * p) / (4**p * factorial(p))) * integral)
+        integral *= square
+        np.subtract(bell, integral, out=integral)
+        integral /= 2 * p - 1  # I_p E^(2p-1)
+        np.multiply(integral, scale * e ** (1 - 2 * p) / (4**p * factorial(p)), out=kernels[p])
     return kernels
 
 

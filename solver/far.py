@@ -13,6 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 from scipy import sparse
+from scipy.linalg.blas import zherk
 
 from ..geometry.lattice import Lattice
 from .cloud import Cloud
@@ -159,29 +160,52 @@ class FarPart:
         phase = np.exp(1j * (self.points[:, :2] @ kt))[:, None] * self._phases(orders)
         fields = [[t(phase) if t and len(t.columns) else None for t in layer] for layer in self.transforms]
         square = (self.lattice.harmonics(orders, kt) ** 2).sum(axis=1)
+        scales = np.array([current_scale, current_scale, current_scale, charge_scale])
         matrix = np.zeros((self.n, self.n), dtype=complex)
         for a, one in enumerate(self.layers):
             for b, other in enumerate(self.layers):
                 direct, image = self.level_kernels(k, square, one.heights, other.heights)
-                parts: dict[bytes, list] = {}
-                for c in range(4):
-                    left, right = fields[a][c], fields[b][c]
-                    if left is None or right is None:
-                        continue
-                    kernel = direct + IMAGE_SIGN[c] * image if self.ground else direct
-                    weighted = ((charge_scale if c == 3 else current_scale) * kernel) @ right
-                    rows, columns = self.transforms[a][c].columns, self.transforms[b][c].columns
-                    key = rows.tobytes() + b"|" + columns.tobytes()
-                    parts.setdefault(key, [rows, columns, [], []])
-                    parts[key][2].append(left.reshape(-1, len(rows)))
-                    parts[key][3].append(weighted.reshape(-1, len(columns)))
-                for rows, columns, lefts, rights in parts.values():
-                    product = np.concatenate(lefts).conj().T @ np.concatenate(rights)
-                    if product.shape == matrix.shape:
-                        matrix += product
-                    else:
-                        matrix[np.ix_(rows, columns)] += product
+                kernels = [
+                    scales[c] * (direct + IMAGE_SIGN[c] * image if self.ground else direct) for c in range(4)
+                ]
+                if a == b and len(one.heights) == 1:
+                    self._add_flat(matrix, a, [kernel[:, 0, 0] for kernel in kernels], fields[a])
+                else:
+                    self._add_pair(matrix, a, b, kernels, fields[a], fields[b])
         return matrix
+
+    def _add_pair(self, matrix: Complexes, a: int, b: int, kernels: list, left: list, right: list) -> None:
+        """``G_a^H D G_b`` for any two layers; components with the same functions in one product."""
+        parts: dict[bytes, tuple[Ints, Ints, list, list]] = {}
+        for c in range(4):
+            if left[c] is None or right[c] is None:
+                continue
+            rows, columns = self.transforms[a][c].columns, self.transforms[b][c].columns
+            part = parts.setdefault(rows.tobytes() + b"|" + columns.tobytes(), (rows, columns, [], []))
+            part[2].append(left[c].reshape(-1, len(rows)))
+            part[3].append((kernels[c] @ right[c]).reshape(-1, len(columns)))
+        for rows, columns, lefts, rights in parts.values():
+            _add_at(matrix, rows, columns, np.concatenate(lefts).conj().T @ np.concatenate(rights))
+
+    def _add_flat(self, matrix: Complexes, a: int, kernels: list[Complexes], fields: list) -> None:
+        """One level with itself: waves whose kernel is imaginary (evanescent, no loss) give j times a Hermitian matrix,
+        at half the cost of a general product; the others are few."""
+        parts: dict[bytes, tuple[Ints, list, list]] = {}
+        for c in range(4):
+            if fields[c] is not None:
+                columns = self.transforms[a][c].columns
+                part = parts.setdefault(columns.tobytes(), (columns, [], []))
+                part[1].append(fields[c][:, 0])
+                part[2].append(kernels[c])
+        for columns, field_list, kernel_list in parts.values():
+            field, kernel = np.concatenate(field_list), np.concatenate(kernel_list)
+            reactive = np.abs(kernel.real) <= 1e-14 * np.abs(kernel)
+            product = _hermitian(field[reactive], kernel.imag[reactive])
+            product = 1j * product
+            rest = ~reactive
+            if rest.any():
+                product += field[rest].conj().T @ (kernel[rest, None] * field[rest])
+            _add_at(matrix, columns, columns, product)
 
     def level_kernels(
         self, k: float, square: Floats, z: Floats, other: Floats
@@ -192,6 +216,25 @@ class FarPart:
         if not self.ground:
             return direct, direct
         return direct, far_kernel(k, square, z[:, None] + other, self.split, self.lattice.area)
+
+
+def _add_at(matrix: Complexes, rows: Ints, columns: Ints, product: Complexes) -> None:
+    if product.shape == matrix.shape:
+        matrix += product
+    else:
+        matrix[np.ix_(rows, columns)] += product
+
+
+def _hermitian(field: Complexes, weight: Floats) -> Complexes:
+    """``field^H diag(weight) field`` with real weights, by rank-k updates of one triangle."""
+    n = field.shape[1]
+    result = np.zeros((n, n), dtype=complex, order="F")
+    for sign, pick in ((1.0, weight > 0), (-1.0, weight < 0)):
+        if pick.any():
+            scaled = np.sqrt(np.abs(weight[pick]))[:, None] * field[pick]
+            result = zherk(sign, scaled.T, beta=1.0, c=result, overwrite_c=True)  # upper triangle of the transpose
+    lower = result.T
+    return np.where(np.tri(n, dtype=bool), lower, lower.conj().T)
 
 
 class _PhaseTable:

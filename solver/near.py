@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
 import numpy as np
@@ -14,6 +15,7 @@ from .cloud import Cloud
 from .corrections import Cell, build_corrections
 from .ewald import Split, near_kernels
 from .pairs import MIRROR, half_cells
+from .threads import thread_count
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -41,17 +43,19 @@ def build_near(basis: Basis, cloud: Cloud, lattice: Lattice, split: Split, groun
     extent = float(np.linalg.norm(np.ptp(cloud.points[:, :2], axis=0)))
     cells = {(int(p), int(q)) for p, q in half_cells(lattice, split.near_radius + extent)} | set(corrections)
     tiles = _tiles(cloud.points, np.arange(len(cloud.points)))
-    blocks = []
-    for cell in sorted(cells, key=lambda m: (m != (0, 0), m)):
+
+    def fill(cell: Cell) -> NearBlock | None:
         shift = np.append(lattice.positions(np.array([cell]))[0], 0.0)
         current, charge = _point_sums(cloud, tiles, shift, split, ground)
         for part, matrices in zip((current, charge), corrections.get(cell, ((), ())), strict=True):
             for p, matrix in enumerate(matrices):
                 rows, columns = matrix.nonzero()
                 part[p][rows, columns] += np.asarray(matrix[rows, columns]).ravel()
-        if block := _compressed(cell, current, charge):
-            blocks.append(block)
-    return blocks
+        return _compressed(cell, current, charge)
+
+    order = sorted(cells, key=lambda m: (m != (0, 0), m))
+    with ThreadPoolExecutor(thread_count()) as pool:  # the array operations inside release the interpreter lock
+        return [block for block in pool.map(fill, order) if block is not None]
 
 
 def _compressed(cell: Cell, current: Floats, charge: Floats) -> NearBlock | None:
@@ -102,7 +106,7 @@ def _point_sums(
             continue
         sources = np.concatenate([tiles[j] for j in near])
         own = len(tile) if symmetric else 0  # the tile with itself comes first and is halved
-        kernels = _kernels(cloud.points[tile], cloud.points[sources] + shift, split, ground, own)
+        kernels = _kernels(cloud.points[tile], cloud.points[sources] + shift, split, ground, own, bool(weights[2].nnz))
         _add_tile(weights, tile, sources, kernels, current, charge)
     return _by_power(current, symmetric), _by_power(charge, symmetric)
 
@@ -116,17 +120,17 @@ def _by_power(sums: Floats, symmetric: bool) -> Floats:
     return result
 
 
-def _kernels(
-    observers: Floats, sources: Floats, split: Split, ground: bool, own: int
-) -> tuple[Floats, Floats]:
-    """Near kernels (n_source, powers, n_observer) for horizontal currents and charges, and for vertical currents."""
+def _kernels(observers: Floats, sources: Floats, split: Split, ground: bool, own: int, vertical: bool) -> list[Floats]:
+    """Near kernels (n_source, powers, n_observer): for horizontal currents and charges, and for vertical currents."""
     direct = _kernel(observers, sources, split)
     direct[:own] *= 0.5
     if not ground:
-        return direct, direct
+        return [direct, direct]
     image = _kernel(observers, sources * MIRROR, split)
     image[:own] *= 0.5
-    return direct - image, direct + image
+    added = direct + image if vertical else direct
+    direct -= image
+    return [direct, added]
 
 
 def _kernel(observers: Floats, sources: Floats, split: Split) -> Floats:
@@ -135,14 +139,16 @@ def _kernel(observers: Floats, sources: Floats, split: Split) -> Floats:
         square += (sources[:, axis, None] - observers[:, axis]) ** 2
     distance = np.sqrt(square, out=square)
     distance[distance < 1e-9 * split.near_radius] = 0.0
-    return np.stack(near_kernels(distance, split), axis=1)
+    kernels = np.empty((len(sources), split.powers, len(observers)))
+    near_kernels(distance, split, out=kernels.transpose(1, 0, 2))
+    return kernels
 
 
 def _add_tile(
     weights: list[sparse.csr_matrix],
     tile: Ints,
     sources: Ints,
-    kernels: tuple[Floats, Floats],
+    kernels: list[Floats],
     current: Floats,
     charge: Floats,
 ) -> None:

@@ -47,7 +47,7 @@ class PeriodicOperator:
         )
         self.near = build_near(self.basis, self.cloud, self.lattice, self.split, cell.ground)
         self.far = FarPart(self.cloud, self.lattice, self.split, tolerance, cell.ground)
-        self._combined: tuple[float, list[Floats]] | None = None
+        self._combined: tuple[float, tuple[Floats, Floats, Floats, Floats]] | None = None
 
     @property
     def n(self) -> int:
@@ -67,26 +67,38 @@ class PeriodicOperator:
             )
         kt = np.asarray(kt, dtype=float)
         z = self.far.matrix(k, kt, 1j * k * ETA, ETA / (1j * k))
-        for block, reactance in zip(self.near, self._at(k), strict=True):
-            if block.cell == (0, 0):
-                z.imag += reactance
-                continue
-            phase = np.exp(-1j * (kt @ self.lattice.positions(np.array([block.cell]))[0]))
-            z[np.ix_(block.rows, block.columns)] += (1j * phase) * reactance
-            z[np.ix_(block.columns, block.rows)] += (1j * phase.conjugate()) * reactance.T
+        home, even, odd, rho = self._at(k)
+        z.imag += home
+        if len(rho):
+            angle = rho @ kt
+            z.imag += (np.cos(angle) @ even).reshape(z.shape)
+            z.real += (np.sin(angle) @ odd).reshape(z.shape)
         return z
 
-    def _at(self, k: float) -> list[Floats]:
-        """Reactance of every near block at k: ``k eta A - (eta / k) Q``; kept for the next scan point."""
-        if self._combined is None or self._combined[0] != k:
-            combined = []
-            for block in self.near:
-                powers = k ** (2.0 * np.arange(len(block.current)))
-                combined.append(
-                    np.tensordot(k * ETA * powers, block.current, 1)
-                    - np.tensordot((ETA / k) * powers, block.charge, 1)
-                )
-            self._combined = (k, combined)
+    def _at(self, k: float) -> tuple[Floats, Floats, Floats, Floats]:
+        """Near reactance ``k eta A - (eta / k) Q`` at k, kept for the next scan point.
+
+        Returns the home block (n, n); for the m other blocks X the flattened ``X + X^T`` and ``X - X^T``, (m, n n), so
+        that ``j (exp(-j a) X + exp(j a) X^T) = j cos(a) (X + X^T) + sin(a) (X - X^T)``; and rho_m, (m, 2).
+        """
+        if self._combined is not None and self._combined[0] == k:
+            return self._combined[1]
+        others = [block for block in self.near if block.cell != (0, 0)]
+        home = np.zeros((self.n, self.n))
+        even, odd = np.zeros((len(others), self.n, self.n)), np.zeros((len(others), self.n, self.n))
+        for block in self.near:
+            powers = k ** (2.0 * np.arange(len(block.current)))
+            x = np.tensordot(k * ETA * powers, block.current, 1) - np.tensordot((ETA / k) * powers, block.charge, 1)
+            if block.cell == (0, 0):
+                home[np.ix_(block.rows, block.columns)] = x
+                continue
+            i = next(i for i, other in enumerate(others) if other is block)
+            even[i][np.ix_(block.rows, block.columns)] = x
+            odd[i] = even[i] - even[i].T
+            even[i] += even[i].T.copy()
+        flat = (len(others), self.n * self.n)
+        rho = self.lattice.positions(np.array([block.cell for block in others]).reshape(-1, 2))
+        self._combined = (k, (home, even.reshape(flat), odd.reshape(flat), rho))
         return self._combined[1]
 
     def __repr__(self) -> str:
