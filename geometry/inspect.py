@@ -171,7 +171,7 @@ def points_modulo_lattice(mesh: Mesh, lattice: Lattice) -> Ints:
     folded[:, :2][folded[:, :2] >= 1.0] = 0.0
     folded[:, 2] -= folded[:, 2].min(initial=0)
     reach = float(1e-5 * _smallest_element(mesh) / np.sqrt((lattice.vectors**2).sum()))
-    pairs = KDTree(folded, boxsize=[1.0, 1.0, 0.0]).query_pairs(reach, output_type="ndarray")
+    pairs = KDTree(folded, boxsize=np.array([1.0, 1.0, 0.0])).query_pairs(reach, output_type="ndarray")
     graph = coo_array((np.ones(len(pairs)), (pairs[:, 0], pairs[:, 1])), shape=(len(folded), len(folded)))
     return connected_components(graph, directed=False)[1].astype(np.int64)
 

@@ -63,7 +63,7 @@ class Lattice:
     @cached_property
     def reciprocal(self) -> Floats:
         """Rows b1 and b2 with ``b_i . a_j = 2 pi delta_ij``, shape (2, 2), rad/m."""
-        return 2 * np.pi * np.linalg.inv(self.vectors).T
+        return 2 * np.pi * np.asarray(np.linalg.inv(self.vectors), dtype=float).T
 
     @cached_property
     def reduced(self) -> Lattice:

@@ -137,6 +137,8 @@ def _refuse_unmatched(
         if (miss <= SAME * 10 * least[n]).all():
             continue
         gap = float(point_triangle_distance(middle[n : n + 1], corners[n : n + 1])[0])
+        if gap > NEAR * least[n]:
+            continue  # past the sharp corner of a flat triangle, where its margin reaches far
         almost = gap > SAME * 10 * least[n]
         if almost and miss.min() <= SAME * 10 * least[n]:
             continue  # a sharp corner that ends on the edge's own end
@@ -229,5 +231,5 @@ def _on_sheet(mesh: Mesh, shifts: Floats) -> NDArray[np.bool_]:
         tree = KDTree(mesh.points[corners])
         for shift in shifts[shifts.any(axis=1)]:
             gap, _ = tree.query((mesh.points[mesh.segments] - shift).reshape(-1, 3))
-            attached |= gap.reshape(-1, 2) <= SAME * mesh.segment_lengths[:, None]
+            attached |= np.reshape(gap, (-1, 2)) <= SAME * mesh.segment_lengths[:, None]
     return attached

@@ -171,16 +171,16 @@ def _classes(points: Floats, lattice: Lattice, tolerance: float) -> tuple[Ints, 
     scale = np.sqrt(lattice.area)
     torus = np.column_stack([np.mod(fraction, 1.0), points[:, 2] / scale])
     torus[:, :2][torus[:, :2] >= 1.0] = 0.0
-    tree = cKDTree(torus, boxsize=[1.0, 1.0, 0.0])
+    tree = cKDTree(torus, boxsize=np.array([1.0, 1.0, 0.0]))
     radius = tolerance / np.linalg.norm(lattice.reduced.vectors, axis=1).min()
     pairs = tree.query_pairs(max(radius, 1e-12), output_type="ndarray")
-    graph = sparse.coo_matrix((np.ones(len(pairs)), (pairs[:, 0], pairs[:, 1])), shape=(len(points),) * 2)
+    graph = sparse.coo_matrix((np.ones(len(pairs)), (pairs[:, 0], pairs[:, 1])), shape=(len(points), len(points)))
     _, label = sparse.csgraph.connected_components(graph, directed=False)
     first = np.full(label.max() + 1, -1)
     for i in range(len(points) - 1, -1, -1):
         first[label[i]] = i
     shift = np.rint(fraction[first[label]] - fraction).astype(np.int64)
-    return label, shift
+    return label.astype(np.int64), shift
 
 
 def _add_edges(builder: _Builder, ground: bool, tolerance: float) -> None:

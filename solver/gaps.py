@@ -32,7 +32,7 @@ class GapFunctional:
 
     def __init__(self, name: str, gap: Gap, basis: Basis, lattice: Lattice):
         corners = np.concatenate([c.reshape(-1, 3) for c in (basis.triangles, basis.segments, basis.fans)])
-        reach = np.linalg.norm(np.ptp(corners[:, :2], axis=0)) + gap.width + gap.span
+        reach = float(np.linalg.norm(np.ptp(corners[:, :2], axis=0))) + gap.width + gap.span
         self.shifts: list[Floats] = []
         self.parts: list[Floats] = []
         middle = corners[:, :2].mean(axis=0) - gap.centre[:2]
@@ -100,7 +100,9 @@ def _planes(gap: Gap, centre: Floats) -> list[tuple[Floats, float]]:
 def _candidates(corners: Floats, centre: Floats, gap: Gap) -> NDArray[np.int64]:
     middle = corners.mean(axis=1)
     radius = np.linalg.norm(corners - middle[:, None], axis=2).max(axis=1, initial=0.0)
-    return np.flatnonzero(np.linalg.norm(middle - centre, axis=1) < radius + 0.5 * np.hypot(gap.width, gap.span) * 1.01)
+    return np.flatnonzero(
+        np.linalg.norm(middle - centre, axis=1) < radius + 0.5 * np.hypot(gap.width, gap.span) * 1.01
+    )
 
 
 def _clip(polygon: Floats, planes: list[tuple[Floats, float]]) -> Floats:

@@ -41,8 +41,8 @@ def wire_impedance(material: Material, radius: float, frequency: float) -> compl
     z = complex(material.wire_resistance or 0.0)
     if material.conductivity is not None:
         kc = (1 - 1j) / skin_depth(material.conductivity, frequency)
-        argument = kc * radius
-        z += kc * jve(0, argument) / jve(1, argument) / (2 * np.pi * radius * material.conductivity)
+        argument = np.asarray(kc * radius)
+        z += kc * complex(jve(0, argument) / jve(1, argument)) / (2 * np.pi * radius * material.conductivity)
     return z
 
 
@@ -96,13 +96,16 @@ def _sheet_overlaps(basis: Basis, mine: NDArray[np.bool_]) -> sparse.csr_matrix:
         shapes = (middles[:, None] - corners) / (2 * area)
         block = area / 3 * np.einsum("qac,qbc->ab", shapes, shapes)
         a, b = np.meshgrid(3 * t + np.arange(3), 3 * t + np.arange(3), indexing="ij")
-        rows.append(a.ravel()), columns.append(b.ravel()), values.append(block.ravel())
+        rows.append(a.ravel())
+        columns.append(b.ravel())
+        values.append(block.ravel())
     start = basis.shape_offsets[2]
     for f, owner in enumerate(basis.fan_owner):
         if mine[owner] and not basis.fan_shift[f].any():
             for column, value in _fan_overlaps(basis, f):
                 index = np.array([start + f, column])
-                rows.append(index), columns.append(index[::-1])
+                rows.append(index)
+                columns.append(index[::-1])
                 values.append(np.array([value, value]) * (0.5 if column == start + f else 1.0))
     if not rows:
         return sparse.csr_matrix((size, size))

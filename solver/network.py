@@ -30,4 +30,4 @@ def port_response(admittance: Complexes, reference: Floats) -> PortResponse:
     current = np.linalg.solve(identity + admittance * reference, 2 * admittance * root)
     scattering = identity - root[:, None] * current
     voltage = 2 * np.diag(root) - reference[:, None] * current
-    return PortResponse(np.linalg.inv(admittance), scattering, voltage)
+    return PortResponse(np.asarray(np.linalg.inv(admittance), dtype=complex), scattering, voltage)

@@ -1,7 +1,7 @@
 """The receive view: a plane wave from above falls on the array whose ports are terminated.
 
-By image theory and reciprocity the excitation of function i by a unit-power wave of unit vector e, bare ground included,
-is ``sqrt(eta / (S cos theta)) conj(e . J_i)`` with the same transforms (waves.radiation) that give its radiation.
+By image theory and reciprocity the excitation of function i by a unit-power wave of unit vector e, bare ground
+included, is ``sqrt(eta / (S cos theta)) conj(e . J_i)`` with the same transforms (waves.radiation) that give its radiation.
 """
 
 from __future__ import annotations
@@ -86,7 +86,8 @@ def _respond(
     driven, scattered = currents[:, :n_port], currents[:, n_port:]
     # terminate the ports: the gap voltage is -R I, I the current there
     admittance, short_circuit = ports.conj().T @ driven, ports.conj().T @ scattered
-    current = np.linalg.solve(np.eye(n_port) + admittance * solver.reference, short_circuit)
+    loaded = np.eye(n_port) + admittance * solver.reference
+    current = np.asarray(np.linalg.solve(loaded, short_circuit), dtype=complex)
     scattered = scattered - driven @ (solver.reference[:, None] * current)
     amplitude, propagating = radiation(operator.cloud, cell.lattice, cell.ground, k, kt, phi, table)
     out = amplitude @ scattered
@@ -94,7 +95,7 @@ def _respond(
         out[table.index((0, 0), 1 if cell.ground else -1, polarisation), polarisation] += (
             -1.0 if cell.ground else 1.0
         )
-    lost = np.array([np.diag(m).real for m in absorbed(absorbing, scattered)]).reshape(-1, 2)
+    lost = np.array([np.real(np.diagonal(m)) for m in absorbed(absorbing, scattered)]).reshape(-1, 2)
     return out * propagating[:, None], np.sqrt(solver.reference)[:, None] * current, lost
 
 

@@ -4,8 +4,8 @@ Waves are power waves of r.m.s. phasors: |amplitude|^2 is the power per cell. Wi
 current (image included), the wave (p, q) of unit vector e has ``E = -(eta k / 2 kz S) e . J(k) e``, so its power
 amplitude is ``-(1/2) sqrt(eta / (S cos theta)) e . J(k)``.
 
-Polarisation 0 is TM with the transverse electric field along the transverse wave vector (the theta unit vector above the
-array), 1 is TE along the phi unit vector; the same on both sides.
+Polarisation 0 is TM with the transverse electric field along the transverse wave vector (the theta unit vector above
+the array), 1 is TE along the phi unit vector; the same on both sides.
 """
 
 from __future__ import annotations

@@ -15,13 +15,12 @@ import time
 from collections.abc import Callable
 
 import numpy as np
-from scipy.linalg import lu_factor
-
 from scanward.geometry.cell import UnitCell
 from scanward.geometry.conductor import Plate
 from scanward.geometry.lattice import Lattice
 from scanward.geometry.mesher import mesh_conductors
 from scanward.solver.operator import PeriodicOperator
+from scipy.linalg import lu_factor
 
 K = 2 * np.pi
 LATTICE = Lattice(np.array([0.5, 0.0]), np.array([0.0, 0.5]))
