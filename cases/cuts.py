@@ -121,7 +121,7 @@ def cross_polar_cuts(result: Result) -> Drawing | None:
         "cross-polar-cuts",
         data,
         "image/svg+xml",
-        f"Cross-polar level under the case's drive ({meaning}); values below -80 dB are drawn at -80 dB.",
+        f"Cross-polar level under the case's drive ({meaning}); values below {low:.0f} dB are drawn there.",
         "Line charts of cross-polar level relative to co-polar against scan angle.",
     )
 

@@ -85,7 +85,7 @@ def test_uniform_resistive_sheet(resistance):
         size=np.array([0.5, 0.5]),
         material=Material(sheet_resistance=resistance),
     )
-    response = respond(plate, SQUARE, 0.05, scan)
+    response = respond(plate, SQUARE, 0.035, scan)
     for s, cosine in enumerate(np.cos(np.radians([0, 50]))):
         for polarisation, wave in ((0, ETA * cosine), (1, ETA / cosine)):
             up = response.table.index((0, 0), 1, polarisation)
