@@ -16,7 +16,8 @@ Mode = Literal["TE", "TM"]
 
 
 class Dispersion:
-    """The lines of a stack as functions of x = sqrt(beta^2 - k^2) in units of k, its losses scaled by 0..1."""
+    """The lines of a stack as functions of x = sqrt(beta^2 - k^2) in units of k, its losses scaled by
+    0..1."""
 
     def __init__(self, stack: Stack, k: float, mode: Mode):
         self.ground, self.mode = stack.ground, mode
@@ -28,18 +29,29 @@ class Dispersion:
 
     @property
     def reach(self) -> float:
-        """|x| no bound wave exceeds: slowest medium, plus what a reactive sheet can bind on its own."""
+        """|x| that no wave exceeds whose phase constant exceeds its attenuation.
+
+        The slowest medium, and what the reactance of a sheet binds on its own (TM ``2 eps B/|Y|^2``, TE
+        ``mu B/2``) or against a ground or another sheet close by; with room to spare.
+        """
         slow = np.sqrt(np.abs(self.permittivity * self.permeability).max())
         sheets = self.shunt[self.shunt != 0]
-        bound = 2 * np.abs(self.permittivity).max() / np.abs(sheets)
+        susceptance, size = np.abs(np.imag(sheets)), np.abs(sheets)
+        alone = (
+            2 * np.abs(self.permittivity).max() * susceptance / size**2
+            + susceptance * self.permeability.max()
+        )
         close = (
-            np.sqrt(bound / self.length.min()) if len(self.length) else 0 * bound
-        )  # near a ground or another sheet
-        return float(1.5 * slow + (bound + close + np.abs(sheets) * self.permeability.max()).sum())
+            np.sqrt(2 * np.abs(self.permittivity).max() / size / self.length.min())
+            if len(self.length)
+            else 0 * size
+        )
+        return float(1.5 * (slow + 1) + (alone + close).sum())
 
     @property
     def last_multiple(self) -> int:
-        """Lowest multiple of pi the angle passes: each inductive sheet turns TM half a turn back as x grows."""
+        """Lowest multiple of pi the angle passes: each inductive sheet turns TM half a turn back as x
+        grows."""
         return -int(np.sum(np.imag(self.shunt) < 0)) if self.mode == "TM" else 0
 
     def angle(self, x: float) -> float:

@@ -29,6 +29,8 @@ CUTOFF = 1e-12
 EDGE = 1e-9
 """Lossy waves whose decay constant beyond the stack has a real part below this share of k are not counted as
 bound."""
+MAX_RIM = 400_000
+"""Points at most on the rim of a box whose zeros are counted."""
 
 
 @dataclass(frozen=True)
@@ -89,7 +91,6 @@ def guided_waves(stack: Stack, k: float) -> list[GuidedWave]:
         if not stack.is_lossless:
             roots = _lossy_roots(dispersion, roots)
         betas = sorted((complex(np.sqrt(1 + x * x)) for x in roots), key=lambda b: -b.real)
-        betas = [b for b in betas if abs(b.imag) <= b.real]
         first = 1 if mode == "TE" and stack.ground else 0
         waves += [GuidedWave(mode, i, b, f"{mode}{i + first}") for i, b in enumerate(betas)]
     return waves
@@ -122,29 +123,40 @@ def _lossless_roots(dispersion: Dispersion) -> list[float]:
     return roots
 
 
-# Lossy stacks
+# Lossy stacks. Boxes are drawn in the plane c = tau + j s with x = sinh(tau) + j s cosh(tau): on the line s = -1,
+# where Re(1 + x^2) = 0, the attenuation equals the phase constant, so one box holds just the waves asked for.
 
 
 def _lossy_roots(dispersion: Dispersion, lossless: list[complex]) -> list[complex]:
     """Follow the lossless roots, then make sure of the count."""
+    # passive stacks have no zeros with Re x > 0, Im x > 0; the box reaches a little beyond for those of
+    # vanishing loss
+    low, high = complex(np.arcsinh(EDGE), -1.0), complex(np.arcsinh(dispersion.reach), 1e-3)
     roots: list[complex] = []
     for x in lossless:
         end = _follow(dispersion, x)
-        if end is not None and end.real > EDGE and _is_new(end, roots):
+        if end is not None and _within(end, low, high) and _is_new(end, roots):
             roots.append(end)
-    # passive stacks have no zeros with Re x > 0, Im x > 0; the box reaches a little beyond for those of
-    # vanishing loss
-    reach = dispersion.reach
-    box = complex(EDGE, -reach), complex(reach, 1e-3 * reach)
-    count = _zeros_inside(dispersion, *box)
+    count = _zeros_inside(dispersion, low, high)
     if len(roots) < count:
-        _search(dispersion, roots, *box, count)
+        _search(dispersion, roots, low, high, count)
     if len(roots) != count:
         raise RuntimeError(
             f"{len(roots)} {dispersion.mode} surface waves of a lossy stack were found, "
             f"but the argument principle counts {count}"
         )
     return roots
+
+
+def _point(c: Complexes) -> Complexes:
+    """x at a point of the plane of boxes."""
+    return np.sinh(np.real(c)) + 1j * np.imag(c) * np.cosh(np.real(c))
+
+
+def _within(x: complex, low: complex, high: complex) -> bool:
+    """Whether x lies in the box between two corners of the plane of boxes."""
+    tau = np.arcsinh(x.real)
+    return bool(low.real < tau <= high.real and low.imag < x.imag / np.cosh(tau) <= high.imag)
 
 
 def _is_new(x: complex, roots: list[complex]) -> bool:
@@ -161,7 +173,7 @@ def _follow(dispersion: Dispersion, x: complex) -> complex | None:
             loss, x, step = trial, found, 2 * step
         else:
             step /= 2
-            if step < 1e-6:
+            if step < 0.01:  # the search finds it
                 return None
     return x
 
@@ -195,20 +207,22 @@ def _zeros_inside(dispersion: Dispersion, low: complex, high: complex) -> int:
     """Zeros of W in the box between two corners, by the turns of its argument along the rim."""
     corners = [low, complex(high.real, low.imag), high, complex(low.real, high.imag), low]
     sides = [np.linspace(p, q, 40, endpoint=False) for p, q in pairwise(corners)]
-    if low.real == EDGE and low.imag < 0 < high.imag:  # waves near cut-off crowd about x = 0
-        down, up = -np.geomspace(1e-10, -low.imag, 120)[:-1], np.geomspace(high.imag, 1e-10, 80)
-        sides[3] = EDGE + 1j * np.concatenate([up, [0.0], down])
+    if low.imag < 0 < high.imag:  # waves near cut-off crowd about x = 0
+        up, down = np.geomspace(high.imag, 1e-12, 80), -np.geomspace(1e-12, -low.imag, 120)[:-1]
+        sides[3] = low.real + 1j * np.concatenate([up, [0.0], down])
     rim = np.append(np.concatenate(sides), low)
-    phase = _phase(dispersion, rim)
-    for _ in range(60):
+    phase = _phase(dispersion, _point(rim))
+    while True:
         step = np.angle(np.exp(1j * np.diff(phase)))
-        coarse = np.flatnonzero((np.abs(step) > 0.7) | (dispersion.turning(rim) > 1.0))
-        if not len(coarse) or len(rim) > 400_000:
+        coarse = np.flatnonzero((np.abs(step) > 0.7) | (dispersion.turning(_point(rim)) > 1.0))
+        # a zero on the rim itself cannot be resolved: leave its half turn to the rounding
+        coarse = coarse[np.abs(np.diff(rim))[coarse] > 1e-14]
+        if not len(coarse) or len(rim) > MAX_RIM:
             break
         middle = 0.5 * (rim[coarse] + rim[coarse + 1])
         rim = np.insert(rim, coarse + 1, middle)
-        phase = np.insert(phase, coarse + 1, _phase(dispersion, middle))
-    return round(float(np.angle(np.exp(1j * np.diff(phase))).sum()) / (2 * np.pi))
+        phase = np.insert(phase, coarse + 1, _phase(dispersion, _point(middle)))
+    return round(float(step.sum()) / (2 * np.pi))
 
 
 def _phase(dispersion: Dispersion, x: Complexes) -> Floats:
@@ -221,27 +235,33 @@ def _search(
 ) -> None:
     """Add missing roots to the list: halve the box where zeros are missing until Newton's method finds
     them."""
-    known = [x for x in roots if low.real < x.real <= high.real and low.imag < x.imag <= high.imag]
+    known = [x for x in roots if _within(x, low, high)]
     if len(known) >= count or depth > 60:
         return
     size = high - low
     for share in (0.5, 0.2, 0.8) if count - len(known) == 1 else ():
-        found = _newton(dispersion, low + share * size, known=known)
+        found = _newton(dispersion, complex(_point(np.asarray(low + share * size))), known=known)
         found = None if found is None else _newton(dispersion, found)
-        if found is None or not (low.real < found.real <= high.real and low.imag < found.imag <= high.imag):
-            continue
-        if _is_new(found, roots):
+        if found is not None and _within(found, low, high) and _is_new(found, roots):
             roots.append(found)
             return
-    # the golden cut keeps clear of symmetry lines; the straight side wants its short end near x = 0
+    for share in (0.382, 0.45, 0.55):  # another cut where one runs through a zero
+        halves = _halves(low, high, share)
+        counts = [_zeros_inside(dispersion, *half) for half in halves]
+        if sum(counts) == count:
+            for half, inside in zip(halves, counts, strict=True):
+                _search(dispersion, roots, *half, inside, depth + 1)
+            return
+
+
+def _halves(low: complex, high: complex, share: float) -> list[tuple[complex, complex]]:
+    """The box cut across its longer side, off the middle to keep clear of symmetry lines."""
+    size = high - low
     if size.real > size.imag:
-        cut = low.real + 0.382 * size.real
-        halves = [(low, complex(cut, high.imag)), (complex(cut, low.imag), high)]
-    else:
-        cut = low.imag + 0.618 * size.imag
-        halves = [(low, complex(high.real, cut)), (complex(low.real, cut), high)]
-    for one, other in halves:
-        _search(dispersion, roots, one, other, _zeros_inside(dispersion, one, other), depth + 1)
+        cut = low.real + share * size.real
+        return [(low, complex(cut, high.imag)), (complex(cut, low.imag), high)]
+    cut = low.imag + (1 - share) * size.imag
+    return [(low, complex(high.real, cut)), (complex(low.real, cut), high)]
 
 
 # The lattice

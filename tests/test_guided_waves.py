@@ -8,7 +8,7 @@ from reference_slab import SURFACE_WAVES, surface_wave_index, te1_cutoff
 from scanward.geometry.lattice import Lattice
 from scanward.geometry.stack import Layer, SheetImpedance, Stack
 from scanward.solver.dispersion import Dispersion
-from scanward.solver.guided_waves import circles_hit, guided_waves, mode_count
+from scanward.solver.guided_waves import EDGE, _zeros_inside, circles_hit, guided_waves, mode_count
 from scanward.solver.lines import ETA, Lines
 
 K = 2 * np.pi
@@ -184,3 +184,31 @@ def test_fine_lattices_are_never_hit():
 def test_wrong_wavenumber_is_refused():
     with pytest.raises(ValueError, match="k = 0 rad/m is not above zero"):
         guided_waves(_slab(2.0, 0.1), 0.0)
+
+
+def test_random_lossy_stacks_with_films_meet_their_count():
+    """The count itself must not depend on the size of the box it is taken in."""
+    rng = np.random.default_rng(5)
+    for _ in range(12):
+        layers = tuple(
+            Layer(
+                float(10 ** rng.uniform(-3, -0.3)), float(rng.uniform(1, 10)), float(10 ** rng.uniform(-4, 0))
+            )
+            for _ in range(rng.integers(1, 4))
+        )
+        top = Stack(layers).top
+        film = SheetImpedance(top, complex(10 ** rng.uniform(0, 3.5), rng.normal() * 300))
+        stack = Stack(layers, bool(rng.integers(2)), (film,))
+        waves = guided_waves(stack, K)  # raises unless roots and count agree
+        for mode in ("TM", "TE"):
+            dispersion = Dispersion(stack, K, mode)
+            wide = complex(np.arcsinh(EDGE), -1.0), complex(np.arcsinh(3 * dispersion.reach), 1e-3)
+            found = [w.beta for w in waves if w.polarisation == mode]
+            assert _zeros_inside(dispersion, *wide) == len(found)
+            assert all(0 <= -b.imag <= b.real for b in found)
+
+
+def test_a_miscount_is_not_passed_over(monkeypatch):
+    monkeypatch.setattr("scanward.solver.guided_waves._zeros_inside", lambda *_: 3)
+    with pytest.raises(RuntimeError, match=r"1 TM surface waves of a lossy stack were found.*counts 3"):
+        guided_waves(_slab(2.55, 0.1, 0.01), K)

@@ -121,3 +121,14 @@ def test_wrong_arguments_are_refused():
         radiated_field(stack, K, KT, [0.1], upwards=False)
     with pytest.raises(ValueError, match=r"current has shape \(1, 1, 3\)"):
         absorbed_power(stack, K, KT, [0.1], np.zeros((1, 1, 3)))
+
+
+@pytest.mark.parametrize("height", [0.1, 0.05, 0.35])
+def test_lossless_layers_leave_all_loss_to_the_sheet(height):
+    stack = Stack(
+        (Layer(0.1, 2.5), Layer(0.2, 6.0), Layer(0.05, 1.0)), True, (SheetImpedance(height, 120.0),)
+    )
+    kt, source = np.array([0.3, 0.8, 1.8]) * K, np.array([0.05, 0.1, 0.2, 0.4])
+    given, radiated, absorbed = _balance(stack, source, kt, 1.0)
+    assert np.all(np.abs(absorbed.layers) < 1e-11 * given[:, None])
+    assert np.allclose(absorbed.sheets[:, 0], given - radiated, rtol=1e-10)
