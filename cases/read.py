@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import tomllib
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
@@ -204,7 +204,7 @@ def _place(table: str, number: int, row: Mapping[str, object]) -> str:
 
 @dataclass(frozen=True)
 class _Draft:
-    """The cell before it is meshed; `cell(factor)` meshes it with all element sizes times `factor`."""
+    """The cell before it is meshed; `cell(factor)` meshes it with all elements longer by `factor`."""
 
     lattice: Lattice
     conductors: tuple[Conductor, ...]
@@ -218,18 +218,15 @@ class _Draft:
     def cell(self, factor: float = 1.0) -> UnitCell:
         from ..geometry.mesher import mesh_conductors
 
-        conductors = [
-            replace(c, element_size=None if c.element_size is None else c.element_size * factor)
-            for c in self.conductors
-        ]
         gaps = [terminal.gap for terminal in (*self.ports, *self.loads)]
         mesh = mesh_conductors(
-            conductors,
+            self.conductors,
             self.lattice,
             ground=self.ground,
-            element_size=self.element_size * factor,
+            element_size=self.element_size,
             gaps=gaps,
             method=self.method,
+            refinement=1.0 / factor,
         )
         return UnitCell(self.lattice, mesh, self.ports, self.loads, self.ground)
 

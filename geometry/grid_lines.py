@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections import defaultdict
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import pairwise
@@ -11,21 +10,24 @@ import numpy as np
 from numpy.typing import NDArray
 
 from .errors import InputError
+from .grading import EDGE_OF_GAP, Interval, first_cell
 from .port import Gap
 from .shapes import Region
-from .structured import cell_count, even, fill_intervals
 
 Floats = NDArray[np.float64]
+Key = tuple[int, int, int]
 
 
 @dataclass(frozen=True)
 class EdgeContact:
     """An edge of rectangle `one` along its axis `d1` that lies on rectangle `two` along its axis `d2`.
 
-    A point at x on the edge is at ``sign * x + offset`` on the other; they share low <= x <= high.
+    A point at x on the edge is at ``sign * x + offset`` on the other; they share low <= x <= high. `edge`
+    counts the edges of `one` from its origin: v = 0, u at its end, v at its end, u = 0.
     """
 
     one: int
+    edge: int
     d1: int
     two: int
     d2: int
@@ -36,10 +38,19 @@ class EdgeContact:
 
 
 class _Cuts:
-    """Sorted coordinates along one axis of a rectangle, merged within a tolerance."""
+    """Sorted coordinates along one axis of a rectangle, merged within a tolerance.
+
+    `first` holds the lengths of the cells that start at some of them, where these are to be graded.
+    """
 
     def __init__(self, length: float, tolerance: float):
         self.values, self.tolerance = [0.0, length], tolerance
+        self.first: dict[float, float] = {}
+
+    def grade(self, x: float, first: float) -> None:
+        """Ask for cells that start with length `first` on both sides of the cut nearest to x."""
+        value = self.values[self.position(x)]
+        self.first[value] = min(first, self.first.get(value, np.inf))
 
     def add(self, x: float, clearance: float = 0.0) -> bool:
         """Add x unless it is outside, there already, or closer than `clearance` to another."""
@@ -64,12 +75,19 @@ def rectangle_lines(
     gaps: Sequence[Gap],
     shifts: Floats,
     tolerance: float,
+    *,
+    ground: bool = False,
+    graded: Sequence[bool] | None = None,
+    refinement: float = 1.0,
 ) -> list[tuple[Floats, Floats]]:
     """Grid lines (u, v) of each rectangle, starting at 0.
 
     Lines run through the `points` (n, 3) where wires attach, through the centres of sheet gaps, and through
     the ends of every edge that touches another rectangle or a periodic copy (displaced by `shifts` (k, 3));
-    both sides of a contact get the same lines. Raises InputError when that would need ever finer cells.
+    both sides of a contact get the same lines. Lines of the rectangles marked in `graded` (default: all)
+    crowd towards gaps and free edges, which are those that neither stand on a `ground` at z = 0 nor share
+    half their length or more with another edge or sheet; `refinement` then multiplies the number of cells.
+    Raises InputError when matching the lines would need ever finer cells.
     """
     cuts = [[_Cuts(side, tolerance) for side in r.sides] for r in regions]
     for region, mine, attached in zip(regions, cuts, points, strict=True):
@@ -78,18 +96,38 @@ def rectangle_lines(
                 mine[axis].add(float(x))
     contacts = _edge_contacts(regions, cuts, shifts, tolerance)
     _share_cuts(cuts, contacts, sizes)
-    for region, mine, size in zip(regions, cuts, sizes, strict=True):
-        _cut_at_gaps(region, mine, gaps, 0.1 * size, tolerance)
+    marked = [True] * len(regions) if graded is None else graded
+    for region, mine, size, mark in zip(regions, cuts, sizes, marked, strict=True):
+        _cut_at_gaps(region, mine, gaps, 0.1 * size, tolerance, mark)
     _share_cuts(cuts, contacts, sizes)
-    counts = _matched_counts(cuts, contacts, sizes)
-    return [
-        (fill_intervals(np.array(c[0].values), n[0]), fill_intervals(np.array(c[1].values), n[1]))
-        for c, n in zip(cuts, counts, strict=True)
-    ]
+    for n, (region, mine, size, mark) in enumerate(zip(regions, cuts, sizes, marked, strict=True)):
+        if mark:
+            joined = [c for c in contacts if c.one == n]
+            _grade_free_edges(region, mine, size, joined, tolerance if ground else -np.inf)
+    return _matched_lines(cuts, contacts, sizes, refinement)
+
+
+def _grade_free_edges(
+    region: Region, cuts: list[_Cuts], size: float, contacts: Sequence[EdgeContact], ground: float
+) -> None:
+    """Grade towards the edges that share less than half their length; edges up to z = `ground` are joined."""
+    corners, sides = region.corners, region.sides
+    for edge in range(4):
+        along = edge % 2
+        shared = sum(c.high - c.low for c in contacts if c.edge == edge)
+        stands = max(corners[edge, 2], corners[(edge + 1) % 4, 2]) <= ground
+        if not stands and shared < 0.5 * sides[along]:
+            end = float(sides[1 - along]) if edge in (1, 2) else 0.0
+            cuts[1 - along].grade(end, first_cell(size, float(sides[1 - along]), float(sides[along])))
 
 
 def _cut_at_gaps(
-    region: Region, cuts: list[_Cuts], gaps: Sequence[Gap], clearance: float, tolerance: float
+    region: Region,
+    cuts: list[_Cuts],
+    gaps: Sequence[Gap],
+    clearance: float,
+    tolerance: float,
+    graded: bool,
 ) -> None:
     for gap in gaps:
         centre = np.asarray(gap.centre, dtype=float)
@@ -98,7 +136,10 @@ def _cut_at_gaps(
         along = region.frame[:2] @ np.asarray(gap.direction, dtype=float)
         for axis in (0, 1):
             if abs(along[axis]) > 1 - 1e-6:
-                cuts[axis].add(float(region.local(centre[None])[0, axis]), clearance)
+                x = float(region.local(centre[None])[0, axis])
+                cuts[axis].add(x, clearance)
+                if graded:
+                    cuts[axis].grade(x, EDGE_OF_GAP * gap.width)
 
 
 def _edge_contacts(
@@ -152,7 +193,7 @@ def _edge_on(
         offset = float(p[d2])
         a, b = sorted([sign * (low - offset), sign * (high - offset)])
         cuts[j][other].add(line)
-        return [EdgeContact(i, d1, j, d2, sign, offset, a, b)]
+        return [EdgeContact(i, k, d1, j, d2, sign, offset, a, b)]
     return []
 
 
@@ -179,47 +220,76 @@ def _share_cuts(cuts: list[list[_Cuts]], contacts: Sequence[EdgeContact], sizes:
                     )
 
 
-def _matched_counts(
-    cuts: list[list[_Cuts]], contacts: Sequence[EdgeContact], sizes: Sequence[float]
-) -> list[list[NDArray[np.int64]]]:
-    """Cells per interval, the same on both sides of every contact, and even about the middle."""
-    parent: dict[tuple[int, int, int], tuple[int, int, int]] = {}
+class _Classes:
+    """Intervals (rectangle, axis, index) that must have the same lines, some seen from opposite ends."""
 
-    def root(key: tuple[int, int, int]) -> tuple[int, int, int]:
-        while parent.get(key, key) != key:
-            key = parent[key]
-        return key
+    def __init__(self) -> None:
+        self.parent: dict[Key, tuple[Key, bool]] = {}
+        self.symmetric: set[Key] = set()
 
+    def find(self, key: Key) -> tuple[Key, bool]:
+        """The representative of a class, and whether it runs against `key`."""
+        flip = False
+        while key in self.parent:
+            key, step = self.parent[key]
+            flip ^= step
+        return key, flip
+
+    def join(self, a: Key, b: Key, flip: bool) -> None:
+        (a, one), (b, two) = self.find(a), self.find(b)
+        flip ^= one ^ two
+        if a != b:
+            self.parent[a] = (b, flip)
+            if a in self.symmetric:
+                self.symmetric.add(b)
+        elif flip:
+            self.symmetric.add(a)
+
+
+def _matched_lines(
+    cuts: list[list[_Cuts]], contacts: Sequence[EdgeContact], sizes: Sequence[float], refinement: float
+) -> list[tuple[Floats, Floats]]:
+    """Lines of all rectangles, the same on both sides of every contact."""
+    classes = _Classes()
     for c in contacts:
         one, two = cuts[c.one][c.d1], cuts[c.two][c.d2]
-        shared = one.between(c.low, c.high)
-        for x, y in pairwise(shared):
-            a = (c.one, c.d1, one.position(x))
-            b = (c.two, c.d2, min(two.position(c.sign * x + c.offset), two.position(c.sign * y + c.offset)))
-            parent[root(a)] = root(b)
-    need: dict[tuple[int, int, int], int] = defaultdict(int)
+        for x, y in pairwise(one.between(c.low, c.high)):
+            k = min(two.position(c.sign * x + c.offset), two.position(c.sign * y + c.offset))
+            classes.join((c.one, c.d1, one.position(x)), (c.two, c.d2, k), c.sign < 0)
+    need: dict[Key, Interval] = {}
     for n, mine in enumerate(cuts):
         for axis, line in enumerate(mine):
-            for k, count in enumerate(_own_counts(line.values, sizes[n], mine[1 - axis].values[-1])):
-                key = root((n, axis, k))
-                need[key] = max(need[key], count)
+            for k, interval in enumerate(_own_intervals(line, sizes[n], mine[1 - axis].values[-1])):
+                root, flip = classes.find((n, axis, k))
+                interval = interval.mirrored() if flip else interval
+                need[root] = interval.merged(need.get(root, interval))
+    for root in (root for root in classes.symmetric if root in need):
+        need[root] = need[root].merged(need[root].mirrored())
+    divided = {root: interval.lines(refinement) / interval.length for root, interval in need.items()}
+
+    def lines_of(n: int, axis: int) -> Floats:
+        parts, values = [], cuts[n][axis].values
+        for k, (low, high) in enumerate(pairwise(values)):
+            root, flip = classes.find((n, axis, k))
+            fractions = 1 - divided[root][::-1] if flip else divided[root]
+            parts.append(low + (high - low) * fractions[:-1])
+        return np.concatenate([*parts, values[-1:]])
+
+    return [(lines_of(n, 0), lines_of(n, 1)) for n in range(len(cuts))]
+
+
+def _own_intervals(line: _Cuts, size: float, other_side: float) -> list[Interval]:
+    """Intervals of one axis by themselves; at least two cells along the long side."""
+    values, middle = line.values, 0.5 * line.values[-1]
+    least = 2 if len(values) == 2 and values[-1] >= other_side else 1
     return [
-        [
-            np.array([need[root((n, axis, k))] for k in range(len(line.values) - 1)])
-            for axis, line in enumerate(mine)
-        ]
-        for n, mine in enumerate(cuts)
+        Interval(
+            high - low,
+            size,
+            line.first.get(low, np.inf),
+            line.first.get(high, np.inf),
+            least,
+            low + 1e-6 * (high - low) < middle < high - 1e-6 * (high - low),
+        )
+        for low, high in pairwise(values)
     ]
-
-
-def _own_counts(values: list[float], size: float, other_side: float) -> list[int]:
-    """Cells per interval of one axis by size alone; at least two along the long side; mirror symmetric."""
-    steps = np.diff(values)
-    counts = [cell_count(float(step), size) for step in steps]
-    if sum(counts) == 1 and values[-1] >= other_side:
-        counts[0] = 2
-    middle = 0.5 * values[-1]
-    for k, step in enumerate(steps):
-        if values[k] + 1e-6 * step < middle < values[k + 1] - 1e-6 * step:
-            counts[k] = even(counts[k])
-    return counts

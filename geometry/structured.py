@@ -20,12 +20,6 @@ def cell_count(length: float, size: float) -> int:
     return max(1, int(np.ceil(length / size - 1e-6)))
 
 
-def fill_intervals(cuts: Floats, counts: Ints) -> Floats:
-    """Grid lines through all `cuts` (k,), with interval i split evenly into `counts[i]` cells."""
-    parts = [lo + (hi - lo) * np.arange(n) / n for (lo, hi), n in zip(pairwise(cuts), counts, strict=True)]
-    return np.concatenate([*parts, cuts[-1:]])
-
-
 def grid_triangles(nu: int, nv: int) -> Ints:
     """Triangles of an nu x nv grid of cells, point (i, j) at index ``i (nv + 1) + j``.
 

@@ -45,9 +45,9 @@ def wire_gap(centre, direction=(0, 0, 1), width=1.0):
     return Gap("wire", mm(*centre), np.array(direction, float), width * MM, np.array([0, 1.0, 0]), 0.4 * MM)
 
 
-def build(*conductors, lattice=SKEW, ground=True, size=2.0, gaps=(), method="structured"):
+def build(*conductors, lattice=SKEW, ground=True, size=2.0, gaps=(), method="structured", **more):
     return mesh_conductors(
-        conductors, lattice, ground=ground, element_size=size * MM, gaps=gaps, method=method
+        conductors, lattice, ground=ground, element_size=size * MM, gaps=gaps, method=method, **more
     )
 
 

@@ -119,7 +119,7 @@ def test_overrides_replace_parameters(tmp_path):
 def test_remesh_scales_the_elements_and_keeps_the_gap():
     job = parse_case(STRIP)
     fine = job.remesh(0.5)
-    assert len(fine.mesh.triangles) == 2 * len(job.cell.mesh.triangles)
+    assert len(fine.mesh.triangles) == 4 * len(job.cell.mesh.triangles)
     assert fine.ports[0].gap.width == job.cell.ports[0].gap.width == pytest.approx(1e-3)
     assert fine.mesh.triangle_areas.sum() == pytest.approx(0.0252e-3)
 
