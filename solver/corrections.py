@@ -16,7 +16,8 @@ from .basis import Basis
 from .cloud import TRIANGLE_POINTS, fan_weights, segment_weights, triangle_weights
 from .ewald import singular_kernel
 from .fan_pairs import fan_fan_products, fan_segment_products, fan_triangle_products
-from .pairs import NearPairs, end_distances, find_near_pairs, place
+from .pairs import NearPairs, end_distances, find_near_pairs
+from .rays import Ray
 from .triangle_pairs import POWERS, product_moments, shape_products, triangle_moments
 from .wire_pairs import segment_moments, segment_products, segment_triangle_moments, segment_triangle_products
 
@@ -26,26 +27,26 @@ Cell = tuple[int, int]
 SHAPES = (3, 2, 1)  # shapes on a triangle, a segment, a fan
 
 
-def build_corrections(basis: Basis, lattice: Lattice, ground: bool) -> dict[Cell, tuple[list, list]]:
+def build_corrections(basis: Basis, lattice: Lattice, rays: list[Ray]) -> dict[Cell, tuple[list, list]]:
     """Corrections to the near matrices by cell: ``(current, charge)``, each POWERS sparse (n, n) matrices.
 
     Cells are those of `pairs.half_cells`; the matrix at (0, 0) is symmetric and complete, the one at -m is the
     transpose of that at m.
     """
     collected: dict[Cell, list] = defaultdict(list)
-    for group in find_near_pairs(basis, lattice, ground):
+    for group in find_near_pairs(basis, lattice, rays):
         shift = np.append(lattice.positions(np.array([group.cell]))[0], 0.0)
         collected[group.cell] += _group_entries(basis, group, shift)
     return {cell: _assemble(basis, cell, entries) for cell, entries in collected.items()}
 
 
 def _group_entries(basis: Basis, group: NearPairs, shift: Floats) -> list:
-    """(rows, columns, current, charge, is off-diagonal) blocks in shape numbering for one cell and image."""
+    """(rows, columns, current, charge, is off-diagonal) blocks in shape numbering for one cell and ray."""
     corners = (basis.triangles, basis.segments, basis.fans)
     starts = np.cumsum([0] + [len(c) for c in corners])
     kind_a = np.searchsorted(starts, group.first, side="right") - 1
     kind_b = np.searchsorted(starts, group.second, side="right") - 1
-    sign = -1.0 if group.mirrored else 1.0
+    current_weight, charge_weight = (w[:, None, None, None] for w in group.ray.powers(POWERS))
     entries = []
     for ka in range(3):
         for kb in range(3):
@@ -53,14 +54,16 @@ def _group_entries(basis: Basis, group: NearPairs, shift: Floats) -> list:
             if not len(pick):
                 continue
             i, j = group.first[pick] - starts[ka], group.second[pick] - starts[kb]
-            a, b = corners[ka][i], place(corners[kb][j], shift, group.mirrored)
-            radii = tuple(
-                basis.segment_radius[e] if kind == 1 else None for e, kind in ((i, ka), (j, kb))
-            )
+            a, b = corners[ka][i], group.ray.place(corners[kb][j], shift)
+            radii = tuple(basis.segment_radius[e] if kind == 1 else None for e, kind in ((i, ka), (j, kb)))
             current, charge = _difference(ka, kb, a, b, radii)
             rows = basis.shape_offsets[ka] + SHAPES[ka] * i[:, None] + np.arange(SHAPES[ka])
             columns = basis.shape_offsets[kb] + SHAPES[kb] * j[:, None] + np.arange(SHAPES[kb])
-            entries.append((rows, columns, sign * current, sign * charge, group.first[pick] != group.second[pick]))
+            off_diagonal = group.first[pick] != group.second[pick]
+            if group.cell == (0, 0) and ka == kb:  # inner and outer integral differ in method: make them even
+                own = ~off_diagonal
+                current[:, own] = 0.5 * (current[:, own] + current[:, own].swapaxes(-1, -2))
+            entries.append((rows, columns, current_weight * current, charge_weight * charge, off_diagonal))
     return entries
 
 
@@ -122,7 +125,8 @@ def _assemble(basis: Basis, cell: Cell, entries: list) -> tuple[list, list]:
                 )
                 if cell == (0, 0):
                     total = total + sparse.csr_matrix(
-                        (block[once].ravel(), (index[1][once].ravel(), index[0][once].ravel())), shape=total.shape
+                        (block[once].ravel(), (index[1][once].ravel(), index[0][once].ravel())),
+                        shape=total.shape,
                     )
             matrices[which].append(sparse.csr_matrix(c.T @ total @ c))
     return matrices

@@ -14,7 +14,8 @@ from .basis import Basis
 from .cloud import Cloud
 from .corrections import Cell, build_corrections
 from .ewald import Split, near_kernels
-from .pairs import MIRROR, half_cells
+from .pairs import at_height, half_cells
+from .rays import Ray
 from .threads import thread_count
 
 Floats = NDArray[np.float64]
@@ -33,20 +34,20 @@ class NearBlock:
     cell: Cell
     rows: Ints
     columns: Ints
-    current: Floats
-    charge: Floats
+    current: NDArray
+    charge: NDArray
 
 
-def build_near(basis: Basis, cloud: Cloud, lattice: Lattice, split: Split, ground: bool) -> list[NearBlock]:
+def build_near(basis: Basis, cloud: Cloud, lattice: Lattice, split: Split, rays: list[Ray]) -> list[NearBlock]:
     """Fill the near part. Cells of one half-plane only; the matrix at -m is the transpose of that at m."""
-    corrections = build_corrections(basis, lattice, ground)
+    corrections = build_corrections(basis, lattice, rays)
     extent = float(np.linalg.norm(np.ptp(cloud.points[:, :2], axis=0)))
     cells = {(int(p), int(q)) for p, q in half_cells(lattice, split.near_radius + extent)} | set(corrections)
-    tiles = _tiles(cloud.points, np.arange(len(cloud.points)))
+    tiles = _tiles_by_height(cloud.points, rays)
 
     def fill(cell: Cell) -> NearBlock | None:
         shift = np.append(lattice.positions(np.array([cell]))[0], 0.0)
-        current, charge = _point_sums(cloud, tiles, shift, split, ground)
+        current, charge = _point_sums(cloud, tiles, shift, split, rays)
         for part, matrices in zip((current, charge), corrections.get(cell, ((), ())), strict=True):
             for p, matrix in enumerate(matrices):
                 rows, columns = matrix.nonzero()
@@ -58,7 +59,7 @@ def build_near(basis: Basis, cloud: Cloud, lattice: Lattice, split: Split, groun
         return [block for block in pool.map(fill, order) if block is not None]
 
 
-def _compressed(cell: Cell, current: Floats, charge: Floats) -> NearBlock | None:
+def _compressed(cell: Cell, current: NDArray, charge: NDArray) -> NearBlock | None:
     """Keep the rows and columns that are not zero, or nothing."""
     rows = np.flatnonzero((current[0] != 0).any(axis=1) | (charge[0] != 0).any(axis=1))
     columns = np.flatnonzero((current[0] != 0).any(axis=0) | (charge[0] != 0).any(axis=0))
@@ -82,9 +83,17 @@ def _tiles(points: Floats, index: Ints) -> list[Ints]:
     return _tiles(points, order[:half]) + _tiles(points, order[half:])
 
 
+def _tiles_by_height(points: Floats, rays: list[Ray]) -> list[Ints]:
+    """Tiles of points at one height where rays belong to heights."""
+    heights = sorted({ray.heights[0] for ray in rays if ray.heights is not None})
+    if not heights:
+        return _tiles(points, np.arange(len(points)))
+    return [tile for h in heights for tile in _tiles(points, np.flatnonzero(at_height(points, h)))]
+
+
 def _point_sums(
-    cloud: Cloud, tiles: list[Ints], shift: Floats, split: Split, ground: bool
-) -> tuple[Floats, Floats]:
+    cloud: Cloud, tiles: list[Ints], shift: Floats, split: Split, rays: list[Ray]
+) -> tuple[NDArray, NDArray]:
     """``B^T K_p B`` of the currents and charges with the sources displaced, each (powers, n, n).
 
     Without displacement the kernel is symmetric: only tiles at or after the observers' own are visited.
@@ -92,12 +101,13 @@ def _point_sums(
     n = cloud.n
     symmetric = not shift.any()
     # (observing function, power, source function) while summing: adding a tile then touches whole rows
-    current, charge = np.zeros((n, split.powers, n)), np.zeros((n, split.powers, n))
+    kind = np.result_type(*(w for ray in rays for w in ray.powers(split.powers)))
+    current, charge = np.zeros((n, split.powers, n), kind), np.zeros((n, split.powers, n), kind)
     weights = [sparse.csr_matrix(m.T) for m in (*cloud.current, cloud.charge)]
     boxes = np.array([[cloud.points[t].min(axis=0), cloud.points[t].max(axis=0)] for t in tiles])
     for i, tile in enumerate(tiles):
         gap = np.maximum(boxes[:, 0] + shift - boxes[i, 1], boxes[i, 0] - boxes[:, 1] - shift).clip(min=0)
-        if ground:
+        if len(rays) > 1:
             gap[:, 2] = 0.0
         near = [
             j for j in np.flatnonzero((gap**2).sum(axis=1) < split.near_radius**2) if j >= i or not symmetric
@@ -106,12 +116,14 @@ def _point_sums(
             continue
         sources = np.concatenate([tiles[j] for j in near])
         own = len(tile) if symmetric else 0  # the tile with itself comes first and is halved
-        kernels = _kernels(cloud.points[tile], cloud.points[sources] + shift, split, ground, own, bool(weights[2].nnz))
+        kernels = _kernels(cloud.points[tile], cloud.points[sources], shift, split, rays)
+        for kernel in {id(kernel): kernel for kernel in kernels}.values():
+            kernel[:own] *= 0.5
         _add_tile(weights, tile, sources, kernels, current, charge)
     return _by_power(current, symmetric), _by_power(charge, symmetric)
 
 
-def _by_power(sums: Floats, symmetric: bool) -> Floats:
+def _by_power(sums: NDArray, symmetric: bool) -> NDArray:
     """(observer, power, source) -> (power, observer, source), completed by symmetry where only half was summed."""
     result = np.ascontiguousarray(sums.transpose(1, 0, 2))
     if symmetric:
@@ -120,17 +132,33 @@ def _by_power(sums: Floats, symmetric: bool) -> Floats:
     return result
 
 
-def _kernels(observers: Floats, sources: Floats, split: Split, ground: bool, own: int, vertical: bool) -> list[Floats]:
-    """Near kernels (n_source, powers, n_observer): for horizontal currents and charges, and for vertical currents."""
-    direct = _kernel(observers, sources, split)
-    direct[:own] *= 0.5
-    if not ground:
-        return [direct, direct]
-    image = _kernel(observers, sources * MIRROR, split)
-    image[:own] *= 0.5
-    added = direct + image if vertical else direct
-    direct -= image
-    return [direct, added]
+def _kernels(observers: Floats, sources: Floats, shift: Floats, split: Split, rays: list[Ray]) -> list[NDArray]:
+    """Near kernels (n_source, powers, n_observer) for horizontal currents, vertical currents and charges.
+
+    In the mirror vertical currents keep their sign where horizontal ones and charges change it. Kernels that are the
+    same are one array.
+    """
+    if len(rays) == 1 and rays[0] == Ray():
+        return [_kernel(observers, sources + shift, split)] * 3
+    if rays[-1].mirrored:
+        direct = _kernel(observers, sources + shift, split)
+        image = _kernel(observers, rays[-1].place(sources, shift), split)
+        added = direct + image
+        direct -= image
+        return [direct, added, direct]
+    shape = (len(sources), split.powers, len(observers))
+    kind = np.result_type(*(w for ray in rays for w in ray.powers(split.powers)))
+    current, charge = np.zeros(shape, kind), np.zeros(shape, kind)
+    for ray in rays:
+        assert ray.heights is not None
+        if not at_height(observers[:1], ray.heights[0])[0]:
+            continue
+        pick = np.flatnonzero(at_height(sources, ray.heights[1]))
+        if len(pick):
+            kernel = _kernel(observers, ray.place(sources[pick], shift), split)
+            for target, weight in zip((current, charge), ray.powers(split.powers), strict=True):
+                target[pick] += weight[:, None] * kernel
+    return [current, current, charge]
 
 
 def _kernel(observers: Floats, sources: Floats, split: Split) -> Floats:
@@ -148,9 +176,9 @@ def _add_tile(
     weights: list[sparse.csr_matrix],
     tile: Ints,
     sources: Ints,
-    kernels: list[Floats],
-    current: Floats,
-    charge: Floats,
+    kernels: list[NDArray],
+    current: NDArray,
+    charge: NDArray,
 ) -> None:
     """Weigh the kernels of one tile with the functions on both sides and add them to the sums."""
     powers = current.shape[1]
@@ -159,7 +187,7 @@ def _add_tile(
         rows, columns = (np.flatnonzero(np.diff(m.indptr)) for m in (left, right))
         if not len(rows) or not len(columns):
             continue
-        kernel = kernels[1 if component == 2 else 0]
+        kernel = kernels[(0, 0, 1, 2)[component]]
         inner = (right[columns] @ kernel.reshape(len(sources), -1)).reshape(len(columns), powers, len(tile))
         inner = np.ascontiguousarray(inner.transpose(2, 1, 0)).reshape(len(tile), -1)
         outer = (left[rows] @ inner).reshape(len(rows), powers, len(columns))

@@ -16,6 +16,7 @@ from .cloud import build_cloud
 from .ewald import choose_split
 from .far import FarPart, tall_fraction
 from .near import build_near
+from .rays import air_rays
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
@@ -45,7 +46,7 @@ class PeriodicOperator:
         self.split = choose_split(
             self.lattice.area, k_max, tolerance, splitting, tall=tall_fraction(self.cloud)
         )
-        self.near = build_near(self.basis, self.cloud, self.lattice, self.split, cell.ground)
+        self.near = build_near(self.basis, self.cloud, self.lattice, self.split, air_rays(cell.ground))
         self.far = FarPart(self.cloud, self.lattice, self.split, tolerance, cell.ground)
         self._combined: tuple[float, tuple[Floats, Floats, Floats, Floats]] | None = None
 

@@ -10,25 +10,25 @@ from scipy.spatial import cKDTree
 
 from ..geometry.lattice import Lattice
 from .basis import Basis
+from .rays import Ray
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
 NEAR_RATIO = 1.6  # pairs closer than this times the sum of their radii are integrated accurately
 COAXIAL_REACH = 50.0  # radii: how far along its own axis a wire's thickness is felt
-MIRROR = np.array([1.0, 1.0, -1.0])
 
 
 @dataclass(frozen=True)
 class NearPairs:
-    """Pairs (first, second) of elements, the second displaced by a cell and perhaps mirrored in the ground.
+    """Pairs (first, second) of elements, the second displaced by a cell and placed as the ray tells.
 
     Elements are numbered triangles first, then segments, then fans. Each unordered pair stands once: at cell
     (0, 0) with first <= second; otherwise at the cell of the half-plane of `half_cells`.
     """
 
     cell: tuple[int, int]
-    mirrored: bool
+    ray: Ray
     first: Ints
     second: Ints
 
@@ -50,8 +50,8 @@ def element_spheres(basis: Basis) -> tuple[Floats, Floats]:
     return np.concatenate(centres), np.concatenate(radii)
 
 
-def find_near_pairs(basis: Basis, lattice: Lattice, ground: bool) -> list[NearPairs]:
-    """All pairs to be corrected, by cell and mirror image."""
+def find_near_pairs(basis: Basis, lattice: Lattice, rays: list[Ray]) -> list[NearPairs]:
+    """All pairs to be corrected, by cell and ray."""
     centres, radii = element_spheres(basis)
     reach = 2 * NEAR_RATIO * radii.max()
     if len(basis.segments):
@@ -60,17 +60,20 @@ def find_near_pairs(basis: Basis, lattice: Lattice, ground: bool) -> list[NearPa
     found = []
     for cell in half_cells(lattice, extent + reach):
         shift = np.append(lattice.positions(cell[None])[0], 0.0)
-        for mirrored in (False, True) if ground else (False,):
-            moved = centres * MIRROR + shift if mirrored else centres + shift
+        for ray in rays:
+            moved = ray.place(centres, shift)
             first, second = _close(centres, moved, reach)
+            if ray.heights is not None:
+                keep = at_height(centres, ray.heights[0])[first] & at_height(centres, ray.heights[1])[second]
+                first, second = first[keep], second[keep]
             if not cell.any():
                 keep = first <= second
                 first, second = first[keep], second[keep]
             distance = np.linalg.norm(centres[first] - moved[second], axis=1)
             near = distance <= NEAR_RATIO * (radii[first] + radii[second])
-            near |= _coaxial(basis, first, second, shift, mirrored)
+            near |= _coaxial(basis, first, second, shift, ray)
             if near.any():
-                found.append(NearPairs((int(cell[0]), int(cell[1])), mirrored, first[near], second[near]))
+                found.append(NearPairs((int(cell[0]), int(cell[1])), ray, first[near], second[near]))
     return found
 
 
@@ -79,19 +82,19 @@ def _close(points: Floats, others: Floats, reach: float) -> tuple[Ints, Ints]:
     return pairs.row.astype(np.int64), pairs.col.astype(np.int64)
 
 
-def place(corners: Floats, shift: Floats, mirrored: bool) -> Floats:
-    """Element corners (n, m, 3) displaced and perhaps mirrored."""
-    return corners * MIRROR + shift if mirrored else corners + shift
+def at_height(points: Floats, height: float) -> NDArray[np.bool_]:
+    """Which points lie at a height, to a millionth of their extent."""
+    return np.abs(points[:, 2] - height) < 1e-9 * max(float(np.ptp(points, axis=0).max()), abs(height))
 
 
-def _coaxial(basis: Basis, first: Ints, second: Ints, shift: Floats, mirrored: bool) -> NDArray[np.bool_]:
+def _coaxial(basis: Basis, first: Ints, second: Ints, shift: Floats, ray: Ray) -> NDArray[np.bool_]:
     """Pairs of segments on one axis, within `COAXIAL_REACH` radii."""
     start, stop = len(basis.triangles), len(basis.triangles) + len(basis.segments)
     result = np.zeros(len(first), dtype=bool)
     wires = np.flatnonzero((first >= start) & (first < stop) & (second >= start) & (second < stop))
     if len(wires):
         a = basis.segments[first[wires] - start]
-        b = place(basis.segments[second[wires] - start], shift, mirrored)
+        b = ray.place(basis.segments[second[wires] - start], shift)
         radius = np.maximum(
             basis.segment_radius[first[wires] - start], basis.segment_radius[second[wires] - start]
         )

@@ -22,7 +22,10 @@ Floats = NDArray[np.float64]
 Kernel = Callable[[Floats], Floats]
 
 CHUNK = 200_000  # kernel evaluations at a time
-ORDERS = ((2.5, 4), (4.0, 6))  # Gauss order of touching pairs by aspect ratio up to; beyond: closed inner potential
+ORDERS = (
+    (2.5, 4),
+    (4.0, 6),
+)  # Gauss order of touching pairs by aspect ratio up to; beyond: closed inner potential
 CLOSED_ORDER = 12
 POWERS = 2  # static powers that are singular enough to need correcting: 1/R and R
 
@@ -47,7 +50,8 @@ def triangle_moments(a: Floats, b: Floats) -> Floats:
         for low, high, order in ((0.0, 0.2, CLOSED_ORDER), (0.2, 0.6, 6)):
             pick = rest[(gap >= low * size) & (gap < high * size)]
             if len(pick):
-                moments[0, pick] = _inner_closed(a[pick], b[pick], order)
+                there, back = _inner_closed(a[pick], b[pick], order), _inner_closed(b[pick], a[pick], order)
+                moments[0, pick] = 0.5 * (there + back.swapaxes(-1, -2))  # whichever is called first
     return moments
 
 
