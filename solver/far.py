@@ -15,7 +15,9 @@ from numpy.typing import NDArray
 from scipy import sparse
 from scipy.linalg.blas import zherk
 
+from ..geometry.errors import InputError
 from ..geometry.lattice import Lattice
+from ..geometry.stack import Stack
 from .cloud import Cloud
 from .ewald import Split, far_kernel
 
@@ -69,6 +71,27 @@ def _horizontal(cloud: Cloud) -> NDArray[np.bool_]:
     np.maximum.at(high, cloud.element, cloud.points[:, 2])
     size = float(np.ptp(cloud.points, axis=0).max())
     return (high - low < 1e-10 * size)[cloud.element]
+
+
+def layered_heights(layers: list[Layer], stack: Stack) -> Floats:
+    """Heights of the conductors in a layered stack.
+
+    Raises
+    ------
+    InputError
+        If a conductor is not horizontal, stands at too many heights, or lies below the stack.
+    """
+    where = "[[conductor]]"
+    if any(len(layer.heights) != 1 for layer in layers):
+        raise InputError(
+            "in a layered stack a conductor is vertical or tilted, or there are too many heights.",
+            where=where,
+            allowed=f"horizontal strips, plates and wires at up to {MAX_EXACT_LEVELS} heights in this version",
+        )
+    heights = np.array([layer.heights[0] for layer in layers])
+    if stack.ground and heights.min() <= 0:
+        raise InputError(f"a conductor lies at z = {heights.min():g} m.", where=where, allowed="heights above the ground")
+    return heights
 
 
 def tall_fraction(cloud: Cloud) -> float:
@@ -133,11 +156,11 @@ class _Transform:
 class FarPart:
     """Evaluates the far part at any (k, kt), with everything that depends on the mesh alone kept."""
 
-    def __init__(self, cloud: Cloud, lattice: Lattice, split: Split, tolerance: float, ground: bool):
+    def __init__(self, cloud: Cloud, lattice: Lattice, split: Split, layers: list[Layer], ground: bool):
         self.lattice, self.split, self.ground = lattice, split, ground
         self.n = cloud.n
         self.points = cloud.points
-        self.layers = choose_layers(cloud, split, tolerance)
+        self.layers = layers
         components = [*cloud.current, cloud.charge]
         self.transforms = [
             [_Transform(component, layer) if component.nnz else None for component in components]
@@ -160,19 +183,24 @@ class FarPart:
         phase = np.exp(1j * (self.points[:, :2] @ kt))[:, None] * self._phases(orders)
         fields = [[t(phase) if t and len(t.columns) else None for t in layer] for layer in self.transforms]
         square = (self.lattice.harmonics(orders, kt) ** 2).sum(axis=1)
-        scales = np.array([current_scale, current_scale, current_scale, charge_scale])
+        scales = (current_scale, current_scale, current_scale, charge_scale)
         matrix = np.zeros((self.n, self.n), dtype=complex)
+        for (a, b), components in self.component_kernels(k, square).items():
+            kernels = [scale * kernel for scale, kernel in zip(scales, components, strict=True)]
+            if a == b and len(self.layers[a].heights) == 1:
+                self._add_flat(matrix, a, [kernel[:, 0, 0] for kernel in kernels], fields[a])
+            else:
+                self._add_pair(matrix, a, b, kernels, fields[a], fields[b])
+        return matrix
+
+    def component_kernels(self, k: float, square: Floats) -> dict[tuple[int, int], list[Complexes]]:
+        """D for x, y, z currents and charges by pair of layers, each (n_mode, n_level, n_level)."""
+        result = {}
         for a, one in enumerate(self.layers):
             for b, other in enumerate(self.layers):
                 direct, image = self.level_kernels(k, square, one.heights, other.heights)
-                kernels = [
-                    scales[c] * (direct + IMAGE_SIGN[c] * image if self.ground else direct) for c in range(4)
-                ]
-                if a == b and len(one.heights) == 1:
-                    self._add_flat(matrix, a, [kernel[:, 0, 0] for kernel in kernels], fields[a])
-                else:
-                    self._add_pair(matrix, a, b, kernels, fields[a], fields[b])
-        return matrix
+                result[a, b] = [direct + sign * image if self.ground else direct for sign in IMAGE_SIGN]
+        return result
 
     def _add_pair(self, matrix: Complexes, a: int, b: int, kernels: list, left: list, right: list) -> None:
         """``G_a^H D G_b`` for any two layers; components with the same functions in one product."""

@@ -14,15 +14,17 @@ from ..geometry.cell import UnitCell
 from .basis import build_basis
 from .cloud import build_cloud
 from .ewald import choose_split
-from .far import FarPart, tall_fraction
+from .far import FarPart, choose_layers, layered_heights, tall_fraction
+from .layered_far import LayeredFarPart
 from .near import build_near
-from .rays import air_rays
+from .rays import air_rays, layered_rays
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 
 ETA = 376.730313668  # free-space wave impedance, ohm (CODATA 2018)
 SPEED_OF_LIGHT = 299792458.0  # m/s
+RAY_REACH = 4.0  # rays longer than this over E are left to the far part: exp(-x^2) there is below 1e-7
 
 
 class PeriodicOperator:
@@ -43,12 +45,21 @@ class PeriodicOperator:
         self.lattice = cell.lattice.reduced
         self.basis = build_basis(cell.mesh, cell.lattice, ground=cell.ground)
         self.cloud = build_cloud(self.basis)
+        stack = cell.stack if cell.stack is not None and not cell.stack.is_air else None
+        index = 1.0 if stack is None else float(np.sqrt(np.abs(stack.permittivity * stack.permeability).max()))
         self.split = choose_split(
-            self.lattice.area, k_max, tolerance, splitting, tall=tall_fraction(self.cloud)
+            self.lattice.area, k_max * index, tolerance, splitting, tall=tall_fraction(self.cloud)
         )
-        self.near = build_near(self.basis, self.cloud, self.lattice, self.split, air_rays(cell.ground))
-        self.far = FarPart(self.cloud, self.lattice, self.split, tolerance, cell.ground)
-        self._combined: tuple[float, tuple[Floats, Floats, Floats, Floats]] | None = None
+        layers = choose_layers(self.cloud, self.split, tolerance)
+        if stack is None:
+            rays = air_rays(cell.ground)
+            self.far = FarPart(self.cloud, self.lattice, self.split, layers, cell.ground)
+        else:
+            heights = layered_heights(layers, stack)
+            rays = layered_rays(stack, heights, RAY_REACH / self.split.splitting)
+            self.far = LayeredFarPart(self.cloud, self.lattice, self.split, stack, rays, layers)
+        self.near = build_near(self.basis, self.cloud, self.lattice, self.split, rays)
+        self._combined: tuple[float, tuple[NDArray, NDArray, NDArray, Floats]] | None = None
 
     @property
     def n(self) -> int:
@@ -69,14 +80,18 @@ class PeriodicOperator:
         kt = np.asarray(kt, dtype=float)
         z = self.far.matrix(k, kt, 1j * k * ETA, ETA / (1j * k))
         home, even, odd, rho = self._at(k)
+        angle = rho @ kt
+        if np.iscomplexobj(home):
+            z += 1j * home
+            z += 1j * (np.cos(angle) @ even).reshape(z.shape) + (np.sin(angle) @ odd).reshape(z.shape)
+            return z
         z.imag += home
         if len(rho):
-            angle = rho @ kt
             z.imag += (np.cos(angle) @ even).reshape(z.shape)
             z.real += (np.sin(angle) @ odd).reshape(z.shape)
         return z
 
-    def _at(self, k: float) -> tuple[Floats, Floats, Floats, Floats]:
+    def _at(self, k: float) -> tuple[NDArray, NDArray, NDArray, Floats]:
         """Near reactance ``k eta A - (eta / k) Q`` at k, kept for the next scan point.
 
         Returns the home block (n, n); for the m other blocks X the flattened ``X + X^T`` and ``X - X^T``, (m, n n), so
@@ -85,8 +100,9 @@ class PeriodicOperator:
         if self._combined is not None and self._combined[0] == k:
             return self._combined[1]
         others = [block for block in self.near if block.cell != (0, 0)]
-        home = np.zeros((self.n, self.n))
-        even, odd = np.zeros((len(others), self.n, self.n)), np.zeros((len(others), self.n, self.n))
+        kind = np.result_type(*(part for block in self.near for part in (block.current, block.charge)))
+        home = np.zeros((self.n, self.n), kind)
+        even, odd = (np.zeros((len(others), self.n, self.n), kind) for _ in range(2))
         for block in self.near:
             powers = k ** (2.0 * np.arange(len(block.current)))
             x = np.tensordot(k * ETA * powers, block.current, 1) - np.tensordot((ETA / k) * powers, block.charge, 1)
