@@ -45,9 +45,10 @@ def choose_split(
 
     With ``x^2 = ln(1/tolerance)``: near pairs end where ``exp(-R^2 E^2)`` and Floquet waves where
     ``exp(-(k_t^2 - k^2)/(4 E^2))`` reach the tolerance, so ``R = x/E`` and ``k_t = 2 E x``; the powers end
-    where ``(k/2E)^(2p) / (p! (2p-1))`` does. E defaults to c / sqrt(S), c = 5 for horizontal conductors and 3.5 where the
-    share `tall` of vertical ones is large (measured: balances the cost of filling against that of each scan point; the
-    waves needed grow with E^2, the levels of tall cells with E), raised to k_max/1.4 for cells large against the wavelength, where a smaller
+    where ``(k/2E)^(2p) / (p! (2p-1))`` does. E defaults to c / sqrt(S), c = 5 for horizontal conductors and 3.5
+    where the share `tall` of vertical ones is large (measured: balances the cost of filling against that of each
+    scan point; the waves needed grow with E^2, the levels of tall cells with E), raised to k_max/1.4 for cells large
+    against the wavelength, where a smaller
     E would cancel catastrophically (Capolino, Wilton, Johnson, J. Comp. Phys. 223, 250, 2007).
     """
     e = (

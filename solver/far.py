@@ -31,7 +31,7 @@ IMAGE_SIGN = (-1.0, -1.0, 1.0, -1.0)  # x, y, z current and charge in the ground
 
 @dataclass(frozen=True)
 class Layer:
-    """Heights (n_level,) that carry some of the cloud's points, and the weight of each on every point (n_q, n_level)."""
+    """Heights (n_level,) that carry some of the cloud's points; the weight of each on every point (n_q, n_level)."""
 
     heights: Floats
     weights: sparse.csr_matrix
@@ -90,7 +90,8 @@ def layered_heights(layers: list[Layer], stack: Stack) -> Floats:
         )
     heights = np.array([layer.heights[0] for layer in layers])
     if stack.ground and heights.min() <= 0:
-        raise InputError(f"a conductor lies at z = {heights.min():g} m.", where=where, allowed="heights above the ground")
+        lowest = f"a conductor lies at z = {heights.min():g} m."
+        raise InputError(lowest, where=where, allowed="heights above the ground")
     return heights
 
 

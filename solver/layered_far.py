@@ -29,7 +29,9 @@ Complexes = NDArray[np.complex128]
 class LayeredFarPart(FarPart):
     """`far.FarPart` with the kernels of a stack; every layer of the cloud is one exact height."""
 
-    def __init__(self, cloud: Cloud, lattice: Lattice, split: Split, stack: Stack, rays: list[Ray], layers: list[Layer]):
+    def __init__(
+        self, cloud: Cloud, lattice: Lattice, split: Split, stack: Stack, rays: list[Ray], layers: list[Layer]
+    ):
         super().__init__(cloud, lattice, split, layers, ground=False)
         self.stack = stack
         self.rays: dict[tuple[float, float], list[Ray]] = {}
@@ -68,4 +70,3 @@ class LayeredFarPart(FarPart):
         g = 1j * longitudinal(effective, square)
         whole = np.exp(-g * d) / (2 * g * self.lattice.area)
         return whole - far_kernel(effective, square, np.asarray(d), self.split, self.lattice.area)
-

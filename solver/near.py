@@ -109,9 +109,7 @@ def _point_sums(
         gap = np.maximum(boxes[:, 0] + shift - boxes[i, 1], boxes[i, 0] - boxes[:, 1] - shift).clip(min=0)
         if len(rays) > 1:
             gap[:, 2] = 0.0
-        near = [
-            j for j in np.flatnonzero((gap**2).sum(axis=1) < split.near_radius**2) if j >= i or not symmetric
-        ]
+        near = [j for j in np.flatnonzero((gap**2).sum(axis=1) < split.near_radius**2) if j >= i or not symmetric]
         if not near:
             continue
         sources = np.concatenate([tiles[j] for j in near])

@@ -38,14 +38,12 @@ class PeriodicOperator:
     splitting : overrides the splitting parameter E, 1/m (tests)
     """
 
-    def __init__(
-        self, cell: UnitCell, k_max: float, tolerance: float = 1e-6, *, splitting: float | None = None
-    ):
+    def __init__(self, cell: UnitCell, k_max: float, tolerance: float = 1e-6, *, splitting: float | None = None):
         self.cell, self.k_max, self.tolerance = cell, k_max, tolerance
         self.lattice = cell.lattice.reduced
         self.basis = build_basis(cell.mesh, cell.lattice, ground=cell.ground)
         self.cloud = build_cloud(self.basis)
-        stack = cell.stack if cell.stack is not None and not cell.stack.is_air else None
+        self.stack = stack = cell.stack if cell.stack is not None and not cell.stack.is_air else None
         index = 1.0 if stack is None else float(np.sqrt(np.abs(stack.permittivity * stack.permeability).max()))
         self.split = choose_split(
             self.lattice.area, k_max * index, tolerance, splitting, tall=tall_fraction(self.cloud)

@@ -95,9 +95,7 @@ def _coaxial(basis: Basis, first: Ints, second: Ints, shift: Floats, ray: Ray) -
     if len(wires):
         a = basis.segments[first[wires] - start]
         b = ray.place(basis.segments[second[wires] - start], shift)
-        radius = np.maximum(
-            basis.segment_radius[first[wires] - start], basis.segment_radius[second[wires] - start]
-        )
+        radius = np.maximum(basis.segment_radius[first[wires] - start], basis.segment_radius[second[wires] - start])
         gap = end_distances(a, b).min(axis=(1, 2))
         result[wires] = on_one_axis(a, b, radius) & (gap < COAXIAL_REACH * radius)
     return result

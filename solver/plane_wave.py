@@ -11,9 +11,10 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from .layered_radiation import bare_response, layered_radiation
 from .result import FloquetWaves, ScanPoints
 from .sweep import CellSolver, absorbed, wavenumber
-from .waves import ETA, polarisation_vectors, radiation, wave_table
+from .waves import radiation, wave_azimuth, wave_table
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
@@ -31,7 +32,7 @@ class PlaneWaveResponse:
     table : FloquetWaves; transverse fields along k_t (TM) or phi (TE) count as positive on both sides, so that a
         bare ground reflects -1 in both
     received : (n_freq, n_scan, n_port, 2) power wave delivered to the terminations
-    loss : (n_freq, n_scan, n_loss, 2) power absorbed in conductors and loads
+    loss : (n_freq, n_scan, n_loss, 2) power absorbed in conductors and loads; what lossy layers absorb is missing
     """
 
     frequency: Floats
@@ -64,7 +65,7 @@ def plane_wave_response(solver: CellSolver, frequency: Floats, scan: ScanPoints)
     shape, n_port = (len(frequency), len(scan)), len(cell.ports)
     waves = np.zeros((*shape, len(table.side), 2), dtype=complex)
     received = np.zeros((*shape, n_port, 2), dtype=complex)
-    loss = np.zeros((*shape, len(solver.loss_names), 2))
+    loss = np.zeros((*shape, len(solver.losses.names) + len(cell.loads), 2))
     for f, hertz in enumerate(frequency):
         for s in range(len(scan)):
             point = _respond(solver, float(hertz), scan, s, table)
@@ -89,23 +90,35 @@ def _respond(
     loaded = np.eye(n_port) + admittance * solver.reference
     current = np.asarray(np.linalg.solve(loaded, short_circuit), dtype=complex)
     scattered = scattered - driven @ (solver.reference[:, None] * current)
-    amplitude, propagating = radiation(operator.cloud, cell.lattice, cell.ground, k, kt, phi, table)
+    amplitude, propagating = radiation(operator.cloud, cell.lattice, cell.ground, k, kt, phi, table, solver.stack)
     out = amplitude @ scattered
-    for polarisation in (0, 1):  # what is there without the conductors
-        out[table.index((0, 0), 1 if cell.ground else -1, polarisation), polarisation] += (
-            -1.0 if cell.ground else 1.0
-        )
+    _add_bare(out, solver, k, float(np.linalg.norm(kt)), table)
     lost = np.array([np.real(np.diagonal(m)) for m in absorbed(absorbing, scattered)]).reshape(-1, 2)
     return out * propagating[:, None], np.sqrt(solver.reference)[:, None] * current, lost
 
 
+def _add_bare(out: Complexes, solver: CellSolver, k: float, kt: float, table: FloquetWaves) -> None:
+    """What is there without the conductors: the reflection of the ground or stack, and the wave that passes."""
+    ground = solver.cell.ground
+    bare = np.array([[-1.0, -1.0], [0.0, 0.0]]) if ground else np.array([[0.0, 0.0], [1.0, 1.0]])
+    if solver.stack is not None:
+        bare = bare_response(solver.stack, k, kt)
+    for polarisation in (0, 1):
+        out[table.index((0, 0), 1, polarisation), polarisation] += bare[0, polarisation]
+        if not ground:
+            out[table.index((0, 0), -1, polarisation), polarisation] += bare[1, polarisation]
+
+
 def _excitation(solver: CellSolver, k: float, kt: Floats, phi: float) -> Complexes:
     """``int f_i . E`` of unit-power TM and TE waves from above, (n, 2)."""
-    cell = solver.cell
-    down = FloquetWaves(np.zeros((2, 2), dtype=np.int64), np.full(2, -1), np.array([0, 1]))
-    amplitude, _ = radiation(solver.operator.cloud, cell.lattice, cell.ground, k, kt, phi, down)
+    cell, cloud = solver.cell, solver.operator.cloud
+    both = np.zeros((2, 2), dtype=np.int64), np.array([0, 1])
+    if solver.stack is not None:
+        waves = np.stack([kt, kt])
+        up = FloquetWaves(both[0], np.full(2, 1), both[1])
+        azimuth = wave_azimuth(waves, k, phi)
+        return -2 * layered_radiation(cloud, cell.lattice, solver.stack, k, waves, azimuth, up, arriving=True).T
+    down = FloquetWaves(both[0], np.full(2, -1), both[1])
+    amplitude, _ = radiation(cloud, cell.lattice, cell.ground, k, kt, phi, down)
     # an incident wave exp(-j (kt . rho - kz z)) is the conjugate of the phase of radiation towards -kz at real kt
     return -2 * amplitude.conj().T
-
-
-__all__ = ["ETA", "PlaneWaveResponse", "plane_wave_response", "polarisation_vectors"]

@@ -84,7 +84,5 @@ def layered_rays(stack: Stack, heights: Floats, reach: float) -> list[Ray]:
                 if z == source and d == 0:
                     terms = interface_terms(stack, float(z))
                     kappas = (complex(terms.kappa_a), complex(terms.kappa_q))
-                rays.append(
-                    Ray(False, float(z + d - source), (float(z), float(source)), *amplitudes, *kappas)
-                )
+                rays.append(Ray(False, float(z + d - source), (float(z), float(source)), *amplitudes, *kappas))
     return rays

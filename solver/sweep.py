@@ -10,6 +10,7 @@ from scipy.linalg import lu_factor, lu_solve
 
 from ..geometry.cell import UnitCell
 from .gaps import GapFunctional
+from .layered_radiation import layer_losses
 from .losses import ConductorLoss
 from .network import port_response
 from .operator import SPEED_OF_LIGHT, PeriodicOperator
@@ -34,7 +35,36 @@ class CellSolver:
         self.loads = [GapFunctional(load.name, load.gap, basis, lattice) for load in cell.loads]
         self.losses = ConductorLoss(basis)
         self.reference = np.array([port.resistance for port in cell.ports], dtype=float)
-        self.loss_names = self.losses.names + tuple(load.name for load in cell.loads)
+        self.stack = self.operator.stack
+        self.lossy_stack = self.stack if self.stack is not None and not self.stack.is_lossless else None
+        self.loss_names = self.losses.names + tuple(load.name for load in cell.loads) + self._stack_names()
+
+    def _stack_names(self) -> tuple[str, ...]:
+        if self.lossy_stack is None:
+            return ()
+        layers = [layer.name or f"layer {i + 1}" for i, layer in enumerate(self.lossy_stack.layers)]
+        sheets = [sheet.name or f"sheet {i + 1}" for i, sheet in enumerate(self.lossy_stack.sheets)]
+        return (*layers, *sheets)
+
+    def loss_matrices(
+        self, k: float, kt: Floats, absorbing: list, currents: Complexes, driving: Complexes, waves: Complexes
+    ) -> Complexes:
+        """Hermitian loss matrices (n_loss, m, m) of currents (n, m), in the order of `loss_names`.
+
+        What lossy layers absorb in all is what the currents receive (``driving`` = Z I, (n, m)) less what conductors
+        and loads absorb and what leaves in the outgoing waves (n_wave, m): the fields close to sharp edges, which no
+        finite number of Floquet waves resolves, are counted. The waves at hand share it out between layers.
+        """
+        lost = absorbed(absorbing, currents)
+        if self.lossy_stack is None:
+            return lost
+        received = currents.conj().T @ driving
+        total = 0.5 * (received + received.conj().T) - lost.sum(axis=0) - waves.conj().T @ waves
+        operator = self.operator
+        modes = operator.lattice.harmonics(operator.far.orders(k, kt), kt)
+        parts = layer_losses(operator.cloud, operator.lattice, self.lossy_stack, k, modes, currents)
+        share = np.einsum("lpp->l", parts).real
+        return np.concatenate([lost, (share / share.sum())[:, None, None] * total])
 
     def excitations(self, kt: Floats) -> Complexes:
         """One volt at every port, (n, n_port)."""
@@ -134,10 +164,11 @@ def solve_sweep(
             currents = currents @ response.voltage
             impedance[f, s], scattering[f, s] = response.impedance, response.scattering
             amplitude, _ = radiation(
-                solver.operator.cloud, cell.lattice, cell.ground, k, kt, float(scan.phi[s]), table
+                solver.operator.cloud, cell.lattice, cell.ground, k, kt, float(scan.phi[s]), table, solver.stack
             )
             waves[f, s] = amplitude @ currents
-            loss[f, s] = absorbed(absorbing, currents)
+            driving = right @ response.voltage
+            loss[f, s] = solver.loss_matrices(k, kt, absorbing, currents, driving, waves[f, s])
             if kept is not None:
                 kept[f, s] = currents
             if progress:

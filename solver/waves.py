@@ -14,8 +14,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ..geometry.lattice import Lattice
+from ..geometry.stack import Stack
 from .cloud import Cloud
 from .ewald import longitudinal
+from .layered_radiation import layered_radiation
 from .result import FloquetWaves, ScanPoints
 
 Floats = NDArray[np.float64]
@@ -32,15 +34,13 @@ def wave_table(lattice: Lattice, k_max: float, scan: ScanPoints, ground: bool) -
     orders = sorted(found, key=lambda o: (o != (0, 0), o))
     sides = (1,) if ground else (1, -1)
     rows = [(order, side, polarisation) for order in orders for side in sides for polarisation in (0, 1)]
-    return FloquetWaves(
-        np.array([r[0] for r in rows]), np.array([r[1] for r in rows]), np.array([r[2] for r in rows])
-    )
+    return FloquetWaves(np.array([r[0] for r in rows]), np.array([r[1] for r in rows]), np.array([r[2] for r in rows]))
 
 
 def polarisation_vectors(waves: Floats, k: float, phi: float, side: NDArray, polarisation: NDArray) -> Floats:
     """Unit vectors e, (n_wave, 3), for transverse wave vectors (n_wave, 2); `phi` where k_t = 0."""
     kt = np.linalg.norm(waves, axis=1)
-    angle = np.where(kt > 1e-9 * k, np.arctan2(waves[:, 1], waves[:, 0]), phi)
+    angle = wave_azimuth(waves, k, phi)
     sine = np.minimum(kt / k, 1.0)
     cosine = np.sqrt(1 - sine**2)
     tm = np.stack([cosine * np.cos(angle), cosine * np.sin(angle), -side * sine], axis=1)
@@ -48,12 +48,24 @@ def polarisation_vectors(waves: Floats, k: float, phi: float, side: NDArray, pol
     return np.where(polarisation[:, None] == 0, tm, te)
 
 
+def wave_azimuth(waves: Floats, k: float, phi: float) -> Floats:
+    """Azimuth of transverse wave vectors (n, 2), rad; `phi` where they vanish."""
+    return np.where(np.linalg.norm(waves, axis=1) > 1e-9 * k, np.arctan2(waves[:, 1], waves[:, 0]), phi)
+
+
 def radiation(
-    cloud: Cloud, lattice: Lattice, ground: bool, k: float, kt: Floats, phi: float, table: FloquetWaves
+    cloud: Cloud,
+    lattice: Lattice,
+    ground: bool,
+    k: float,
+    kt: Floats,
+    phi: float,
+    table: FloquetWaves,
+    stack: Stack | None = None,
 ) -> tuple[Complexes, NDArray[np.bool_]]:
     """Power amplitude of every tracked wave per unit coefficient of every basis function.
 
-    Returns (n_wave, n), zero for evanescent waves, and the mask (n_wave,) of propagating ones.
+    `stack`: layers, for horizontal currents. Returns (n_wave, n), zero for evanescent waves, and the mask (n_wave,) of propagating ones.
     """
     waves = lattice.harmonics(table.order, kt)
     kz = longitudinal(k, (waves**2).sum(axis=1))
@@ -62,6 +74,11 @@ def radiation(
     if not propagating.any():
         return result, propagating
     pick = np.flatnonzero(propagating)
+    if stack is not None:
+        angle = wave_azimuth(waves[pick], k, phi)
+        picked = FloquetWaves(table.order[pick], table.side[pick], table.polarisation[pick])
+        result[pick] = layered_radiation(cloud, lattice, stack, k, waves[pick], angle, picked)
+        return result, propagating
     vectors = polarisation_vectors(waves, k, phi, table.side, table.polarisation)[pick]
     transverse = cloud.points[:, :2] @ waves[pick].T
     vertical = cloud.points[:, 2:] * (table.side * kz.real)[pick]

@@ -1,0 +1,49 @@
+"""Every ready-made case runs to a report, meets its limits and agrees with its `[expect]` table; the stated error covers
+what a finer mesh really changes."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from scanward.cases.expect import compare
+from scanward.cases.read import read_case
+from scanward.cases.run import run_case
+from scanward.solver.result import ScanPoints
+from scanward.solver.sweep import solve_sweep
+
+CASES = sorted((Path(__file__).parents[1] / "cases").glob("*.toml"))
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("path", CASES, ids=lambda p: p.stem)
+def test_case_runs_to_its_report_and_expectations(path, tmp_path):
+    outcome = run_case(read_case(path), tmp_path)
+    assert outcome.code == 0, outcome.message
+    assert outcome.result is not None
+    comparisons = compare(outcome.result)
+    assert comparisons, "a ready-made case states at least one number"
+    for comparison in comparisons:
+        wanted = comparison.expectation
+        assert comparison.agrees, f"{wanted.quantity}: {comparison.computed} for {wanted.value} +- {wanted.tolerance}"
+    report = (tmp_path / "report.html").read_text(encoding="utf-8")
+    assert "Cautions" in report
+    assert report.count("<svg") + report.count("data:image") >= 6
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("name", ["strip_dipole", "wire_dipole_free_space"])
+def test_stated_error_covers_a_much_finer_mesh(name, tmp_path):
+    """Reflection on a mesh three times finer, at broadside and the cone's edge: within the report's estimate."""
+    job = read_case(next(p for p in CASES if p.stem == name))
+    outcome = run_case(job, tmp_path)
+    assert outcome.result is not None
+    accuracy = outcome.result.accuracy
+    assert accuracy is not None
+    frequency = job.frequency[[0, -1]]
+    scan = ScanPoints.from_angles(np.array([0.0, job.scan.cone, job.scan.cone]), np.array([0.0, 0.0, np.pi / 2]))
+    coarse = solve_sweep(job.cell, frequency, scan).scattering[..., 0, 0]
+    fine = solve_sweep(job.remesh(1 / 3), frequency, scan).scattering[..., 0, 0]
+    assert np.abs(fine - coarse).max() < accuracy.reflection
