@@ -123,7 +123,7 @@ def longitudinal(k: complex, kt_squared: Floats) -> Complexes:
     On the light circle itself, where the operator is infinite and the solution finite, |kz| is held at 1e-7 k.
     """
     kz = np.sqrt(np.asarray(k * k - kt_squared, dtype=complex))
-    kz = np.where(kz.imag > 0, -kz, kz)
+    kz = np.where(np.imag(kz) > 0, -kz, kz)
     return np.where(np.abs(kz) < 1e-7 * abs(k), 1e-7 * abs(k), kz)
 
 

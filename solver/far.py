@@ -148,7 +148,7 @@ class _Transform:
         )
         self.n_level = n_level
 
-    def __call__(self, phase: Complexes) -> Complexes:
+    def __call__(self, phase: Complexes) -> NDArray:
         """(n_mode, n_level, n_columns) from the phases (n_q, n_mode)."""
         result = (self.stacked @ phase).reshape(self.n_level, len(self.columns), -1)
         return np.ascontiguousarray(result.transpose(2, 0, 1))
@@ -163,10 +163,7 @@ class FarPart:
         self.points = cloud.points
         self.layers = layers
         components = [*cloud.current, cloud.charge]
-        self.transforms = [
-            [_Transform(component, layer) if component.nnz else None for component in components]
-            for layer in self.layers
-        ]
+        self.transforms = [[_Transform(component, layer) for component in components] for layer in self.layers]
         self._phases = _PhaseTable(cloud.points[:, :2], lattice)
 
     @property
@@ -182,7 +179,7 @@ class FarPart:
         """``current_scale A_far + charge_scale Q_far``, (n, n)."""
         orders = self.orders(k, kt)
         phase = np.exp(1j * (self.points[:, :2] @ kt))[:, None] * self._phases(orders)
-        fields = [[t(phase) if t and len(t.columns) else None for t in layer] for layer in self.transforms]
+        fields = [[t(phase) if len(t.columns) else None for t in layer] for layer in self.transforms]
         square = (self.lattice.harmonics(orders, kt) ** 2).sum(axis=1)
         scales = (current_scale, current_scale, current_scale, charge_scale)
         matrix = np.zeros((self.n, self.n), dtype=complex)
@@ -228,8 +225,8 @@ class FarPart:
                 part[2].append(kernels[c])
         for columns, field_list, kernel_list in parts.values():
             field, kernel = np.concatenate(field_list), np.concatenate(kernel_list)
-            reactive = np.abs(kernel.real) <= 1e-14 * np.abs(kernel)
-            product = _hermitian(field[reactive], kernel.imag[reactive])
+            reactive = np.abs(np.real(kernel)) <= 1e-14 * np.abs(kernel)
+            product = _hermitian(field[reactive], np.imag(kernel)[reactive])
             product = 1j * product
             rest = ~reactive
             if rest.any():

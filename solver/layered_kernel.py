@@ -184,7 +184,7 @@ def interface_terms(stack: Stack, height: float) -> InterfaceTerms:
     )
 
 
-def smooth_share(k: float, kt: ArrayLike, kappa: complex, splitting: float) -> Complexes:
+def smooth_share(k: float, kt: ArrayLike, kappa: complex, splitting: float) -> NDArray:
     """``erf(j kz / 2E) / (2 j kz)`` with ``kz^2 = kappa k^2 - k_t^2``: the share of Ewald's near part.
 
     Metres, of the shape of `kt`. Even in kz, so kz = 0 is no special point: the limit there is ``1 / (2 sqrt(pi) E)``.

@@ -48,7 +48,8 @@ def build_near(basis: Basis, cloud: Cloud, lattice: Lattice, split: Split, rays:
     def fill(cell: Cell) -> NearBlock | None:
         shift = np.append(lattice.positions(np.array([cell]))[0], 0.0)
         current, charge = _point_sums(cloud, tiles, shift, split, rays)
-        for part, matrices in zip((current, charge), corrections.get(cell, ((), ())), strict=True):
+        missed = corrections.get(cell, ([], []))
+        for part, matrices in ((current, missed[0]), (charge, missed[1])):
             for p, matrix in enumerate(matrices):
                 rows, columns = matrix.nonzero()
                 part[p][rows, columns] += np.asarray(matrix[rows, columns]).ravel()

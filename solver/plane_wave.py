@@ -1,7 +1,7 @@
 """The receive view: a plane wave from above falls on the array whose ports are terminated.
 
 By image theory and reciprocity the excitation of function i by a unit-power wave of unit vector e, bare ground
-included, is ``sqrt(eta / (S cos theta)) conj(e . J_i)`` with the same transforms (waves.radiation) that give its radiation.
+included, is ``sqrt(eta / (S cos theta)) conj(e . J_i)`` with the transforms (waves.radiation) of its radiation.
 """
 
 from __future__ import annotations

@@ -54,7 +54,7 @@ class Ray:
 
 def _real(values: NDArray) -> NDArray:
     values = np.asarray(values)
-    return values.real.copy() if np.iscomplexobj(values) and not np.any(values.imag) else values
+    return np.real(values).copy() if not np.any(np.imag(values)) else values
 
 
 def air_rays(ground: bool) -> list[Ray]:
@@ -76,13 +76,14 @@ def layered_rays(stack: Stack, heights: Floats, reach: float) -> list[Ray]:
             kappa = complex(np.mean(stack.permittivity[regions] * stack.permeability[regions]))
             distances = np.unique(np.concatenate([images.a.distance, images.q.distance]))
             for d in distances:
-                amplitudes = [
+                current, charge = (
                     complex(part.amplitude[np.abs(part.distance - d) < 1e-12 + 1e-9 * d].sum())
                     for part in (images.a, images.q)
-                ]
+                )
                 kappas = (kappa, kappa)
                 if z == source and d == 0:
                     terms = interface_terms(stack, float(z))
                     kappas = (complex(terms.kappa_a), complex(terms.kappa_q))
-                rays.append(Ray(False, float(z + d - source), (float(z), float(source)), *amplitudes, *kappas))
+                lift, pair = float(z + d - source), (float(z), float(source))
+                rays.append(Ray(False, lift, pair, current, charge, *kappas))
     return rays

@@ -65,7 +65,8 @@ def radiation(
 ) -> tuple[Complexes, NDArray[np.bool_]]:
     """Power amplitude of every tracked wave per unit coefficient of every basis function.
 
-    `stack`: layers, for horizontal currents. Returns (n_wave, n), zero for evanescent waves, and the mask (n_wave,) of propagating ones.
+    `stack`: layers, for horizontal currents. Returns (n_wave, n), zero for evanescent waves, and the mask (n_wave,)
+    of propagating ones.
     """
     waves = lattice.harmonics(table.order, kt)
     kz = longitudinal(k, (waves**2).sum(axis=1))

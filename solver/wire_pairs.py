@@ -42,7 +42,10 @@ def _moments(a: Floats, b: Floats, rule_a: tuple, rule_b: tuple, kernel) -> Floa
     ua, ub = np.stack([1 - x, x], 1) * wx[:, None], np.stack([1 - y, y], 1) * wy[:, None]
     scale = np.linalg.norm(a[:, 1] - a[:, 0], axis=1) * np.linalg.norm(b[:, 1] - b[:, 0], axis=1)
     return np.stack(
-        [np.einsum("qc,nqr,rd,n->ncd", ua, kernel(distance, p), ub, scale, optimize=True) for p in range(POWERS)]
+        [
+            np.einsum("qc,nqr,rd,n->ncd", ua, kernel(distance, p), ub, scale, optimize=True)
+            for p in range(POWERS)
+        ]
     )
 
 
@@ -92,7 +95,10 @@ def _self_moments(length: float, radius: float, flipped: bool) -> Floats:
     overlap = np.einsum("q,cqt,dqt->cdt", wu, left, right) * (1 - t)
     overlap = overlap + overlap.transpose(1, 0, 2)
     result = np.stack(
-        [overlap @ (w * tube_kernel(length * t, np.asarray(radius), np.asarray(radius), p)) for p in range(POWERS)]
+        [
+            overlap @ (w * tube_kernel(length * t, np.asarray(radius), np.asarray(radius), p))
+            for p in range(POWERS)
+        ]
     )
     result *= length**2
     return result[:, :, ::-1] if flipped else result
@@ -101,7 +107,9 @@ def _self_moments(length: float, radius: float, flipped: bool) -> Floats:
 def _panels(a: Floats, b: Floats) -> int:
     """Equal panels as short as the smallest distance between sample points."""
     x = np.linspace(0, 1, 9)[:, None]
-    gap = end_distances(a[:, None, 0] + x * (a[:, 1] - a[:, 0])[:, None], b[:, None, 0] + x * (b[:, 1] - b[:, 0])[:, None])
+    gap = end_distances(
+        a[:, None, 0] + x * (a[:, 1] - a[:, 0])[:, None], b[:, None, 0] + x * (b[:, 1] - b[:, 0])[:, None]
+    )
     size = max(np.linalg.norm(s[:, 1] - s[:, 0], axis=1).max() for s in (a, b))
     return int(np.clip(np.ceil(size / max(gap.min(), 1e-9 * size)), 1, MAX_PANELS))
 
@@ -137,7 +145,9 @@ def segment_rules(segments: Floats, corners: Floats, soft: Floats, end: NDArray[
         nodes, _ = quadrature.triangle(7)
         samples = np.concatenate([corners[i], nodes @ corners[i]])
         gap = end_distances(line[None], samples[None]).min()
-        rules.append(quadrature.uniform(int(np.clip(np.ceil(size / max(gap, 1e-9 * size)), 1, MAX_PANELS)), 5))
+        rules.append(
+            quadrature.uniform(int(np.clip(np.ceil(size / max(gap, 1e-9 * size)), 1, MAX_PANELS)), 5)
+        )
     return rules
 
 
@@ -167,6 +177,9 @@ def segment_triangle_products(segments: Floats, triangles: Floats, moments: Floa
     )
     unit = along / length[:, None]
     dots = np.einsum("nc,ndc->nd", unit, triangles)
-    current = np.einsum("...nsd,nd->...ns", moments, dots)[..., None] - moments.sum(-1)[..., None] * dots[:, None, :]
+    current = (
+        np.einsum("...nsd,nd->...ns", moments, dots)[..., None]
+        - moments.sum(-1)[..., None] * dots[:, None, :]
+    )
     charge = (moments.sum(axis=(-1, -2)) / (length * area))[..., None, None] * np.array([[-1.0], [1.0]])
     return current / (2 * area)[:, None, None], np.broadcast_to(charge, current.shape)

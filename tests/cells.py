@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import numpy as np
-
 from scanward.geometry.cell import UnitCell
 from scanward.geometry.conductor import Material, Plate, Strip, Wire
 from scanward.geometry.lattice import Lattice

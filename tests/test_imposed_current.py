@@ -29,7 +29,11 @@ class Sinusoid:
             name="w", points=np.stack([point(-length / 2, 0, z), point(length / 2, 0, z)]), radius=radius
         )
         mesh = mesh_conductors(
-            [wire], self.lattice, ground=height is not None, element_size=length / segments * 1.001
+            [wire],
+            self.lattice,
+            ground=height is not None,
+            element_size=length / segments * 1.001,
+            grading=False,
         )
         self.operator = PeriodicOperator(UnitCell(self.lattice, mesh, (), (), height is not None), 1.01 * K)
         basis = self.operator.basis

@@ -9,8 +9,20 @@ import dataclasses
 
 import numpy as np
 import pytest
-from cells import FREQUENCY, PEC, SQUARE, X, Y, K, make, point, probe_fed_plate, sheet_gap, strip_dipole, wire_gap
-
+from cells import (
+    FREQUENCY,
+    PEC,
+    SQUARE,
+    K,
+    X,
+    Y,
+    make,
+    point,
+    probe_fed_plate,
+    sheet_gap,
+    strip_dipole,
+    wire_gap,
+)
 from scanward.geometry.cell import UnitCell
 from scanward.geometry.conductor import Plate, Strip, Wire
 from scanward.geometry.lattice import Lattice
@@ -31,11 +43,15 @@ def tilted_cell(ground: bool) -> UnitCell:
         normal=point(-0.4, 0.0, 0.8),
     )  # fmt: skip
     wire = Wire(
-        name="wire", points=np.array([[-0.2, -0.15, 0.1], [-0.05, -0.12, 0.2], [0.12, -0.16, 0.12]]), radius=0.004
+        name="wire",
+        points=np.array([[-0.2, -0.15, 0.1], [-0.05, -0.12, 0.2], [0.12, -0.16, 0.12]]),
+        radius=0.004,
     )
     centre = np.mean([[-0.2, -0.15, 0.1], [-0.05, -0.12, 0.2]], axis=0)
     along = np.array([0.15, 0.03, 0.1]) / np.linalg.norm([0.15, 0.03, 0.1])
-    return make([plate, wire], [wire_gap(centre, 0.02, 0.004, along)], ground=ground, size=0.045, lattice=SKEW)
+    return make(
+        [plate, wire], [wire_gap(centre, 0.02, 0.004, along)], ground=ground, size=0.045, lattice=SKEW
+    )
 
 
 def connected_strip(offset: float = 0.0, lattice: Lattice = SQUARE) -> UnitCell:
@@ -127,7 +143,8 @@ def test_where_a_crossing_conductor_is_cut_does_not_matter():
     recut = dataclasses.replace(mesh, points=merged, triangles=index.reshape(-1)[np.array(triangles)])
     assert len(recut.triangles) == len(mesh.triangles)
     reference, result = (
-        solve_sweep(dataclasses.replace(cell, mesh=m), [FREQUENCY], SCAN, tolerance=1e-9) for m in (mesh, recut)
+        solve_sweep(dataclasses.replace(cell, mesh=m), [FREQUENCY], SCAN, tolerance=1e-9)
+        for m in (mesh, recut)
     )
     np.testing.assert_allclose(result.impedance, reference.impedance, rtol=1e-7)
 
@@ -164,7 +181,8 @@ def test_supercell_equals_the_unit_cell_port_by_port(name):
 def test_two_ports_are_reciprocal_under_opposite_scan():
     """S(kt)^T = S(-kt) for every pair of ports."""
     bars = [
-        Strip(name=n, start=point(-0.2, y, 0.2), end=point(0.2, y, 0.2), width=0.02) for n, y in (("a", -0.1), ("b", 0.13))
+        Strip(name=n, start=point(-0.2, y, 0.2), end=point(0.2, y, 0.2), width=0.02)
+        for n, y in (("a", -0.1), ("b", 0.13))
     ]
     gaps = [sheet_gap((x, y, 0.2), 0.02, 0.02, X, Y) for x, y in ((0.03, -0.1), (-0.05, 0.13))]
     cell = make(bars, gaps, ground=True)

@@ -8,8 +8,6 @@ import numpy as np
 import pytest
 from cells import FREQUENCY, SQUARE, K, make, point, sheet_gap, strip_dipole, wire_gap
 from reference_spectral import TABLE
-from test_invariance import doubled
-
 from scanward.geometry.cell import UnitCell
 from scanward.geometry.conductor import Plate, Strip, Wire
 from scanward.geometry.errors import InputError
@@ -20,6 +18,7 @@ from scanward.solver.plane_wave import plane_wave_response
 from scanward.solver.result import ScanPoints
 from scanward.solver.sweep import CellSolver, solve_sweep
 from scanward.solver.waves import radiation
+from test_invariance import doubled
 
 SCAN = ScanPoints.from_cosines([0.0, 0.31, -0.2], [0.0, 0.27, 0.55])
 KT = K * np.array([0.31, 0.27])
@@ -52,7 +51,7 @@ CELLS = {
 
 @pytest.mark.parametrize("name", CELLS)
 def test_splitting_parameter_and_number_of_waves_do_not_matter(name):
-    """From about 150 to 1000 Floquet waves; the far kernel falls as k_t^-5 along one interface, so 1e-6 rather than 1e-7,
+    """From about 150 to 1000 Floquet waves; the far kernel falls as k_t^-5 along one interface, so 1e-6, not 1e-7,
     and as k_t^-3 exp(-k_t d) between heights, whose rays carry the leading order only."""
     limit = 3e-5 if name == "two heights" else 1e-6
     cell = CELLS[name]()
@@ -116,8 +115,8 @@ def test_lossless_power_balance(name):
 
 
 def test_layer_loss_by_two_routes():
-    """What the balance leaves for the layer, against the Poynting power the Floquet waves lose in it: the sum over waves
-    rises to it slowly (edge fields) and never passes it."""
+    """What the balance leaves for the layer, against the Poynting power that Floquet waves lose in it: their
+    sum rises to it slowly (edge fields) and never passes it."""
     cell = printed(Layer(0.19, 2.55, 0.01), size=0.02)
     shares = []
     for splitting in (8.0, 16.0, 32.0):

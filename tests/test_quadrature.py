@@ -6,7 +6,6 @@ from math import factorial
 
 import numpy as np
 import pytest
-
 from scanward.solver import quadrature
 
 TRIANGLE = np.array([[0.0, 0.0, 0.0], [1.0, 0.0, 0.0], [0.3, 0.8, 0.0]])

@@ -1,5 +1,5 @@
-"""Every ready-made case runs to a report, meets its limits and agrees with its `[expect]` table; the stated error covers
-what a finer mesh really changes."""
+"""Every ready-made case runs to a report and agrees with its `[expect]` table; the stated error covers what a finer
+mesh really changes."""
 
 from __future__ import annotations
 
@@ -7,7 +7,6 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-
 from scanward.cases.expect import compare
 from scanward.cases.read import read_case
 from scanward.cases.run import run_case

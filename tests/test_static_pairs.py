@@ -4,12 +4,11 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from scipy.integrate import quad
-
 from scanward.solver import quadrature
 from scanward.solver.potentials import triangle_potentials
 from scanward.solver.triangle_pairs import shape_products, triangle_moments
 from scanward.solver.wire_pairs import segment_moments, segment_triangle_moments, tube_kernel
+from scipy.integrate import quad
 
 RNG = np.random.default_rng(20261201)
 BASE = np.array([[0.0, 0.0, 0.0], [1.0, 0.0, 0.0], [0.2, 0.7, 0.0]])
@@ -118,7 +117,9 @@ def tube_reference(a, b, radius):
     def inner(x):
         shape = 1 - (x - a[0]) / (a[1] - a[0])
         breaks = [x] if b[0] < x < b[1] else None
-        value = quad(lambda y: (1 - (y - b[0]) / (b[1] - b[0])) * kernel(x - y), *b, points=breaks, limit=200)[0]
+        value = quad(
+            lambda y: (1 - (y - b[0]) / (b[1] - b[0])) * kernel(x - y), *b, points=breaks, limit=200
+        )[0]
         return shape * value
 
     return quad(inner, *a, limit=200, epsrel=1e-8)[0]
@@ -137,6 +138,8 @@ def test_wire_attached_to_a_sheet():
     segment = np.array([[0.0, 0.0, 0.0], [0.0, 0.0, 0.4]])
     moments = segment_triangle_moments(segment[None], BASE[None], np.array([0.01]))[0, 0]
     x, w = quadrature.graded(16, 10)
-    potential, _ = triangle_potentials(BASE[None], (segment[0] + x[:, None] * (segment[1] - segment[0]))[None], 0.01)
+    potential, _ = triangle_potentials(
+        BASE[None], (segment[0] + x[:, None] * (segment[1] - segment[0]))[None], 0.01
+    )
     exact = 0.4 * np.einsum("q,qs,qc->sc", w, np.stack([1 - x, x], 1), potential[0]) / (4 * np.pi)
     np.testing.assert_allclose(moments, exact, rtol=1e-4)
