@@ -69,7 +69,8 @@ def mesh_conductors(
         Where sheets overlap, the one named first keeps the place.
     grading
         Narrower cells at the free edges and gaps of structured strips and plates, where their current is
-        singular; they reach the accuracy of uniform meshes of many times as many unknowns.
+        singular, and shorter segments at the open ends and gaps of wires: the accuracy of uniform meshes of
+        many times as many unknowns.
     refinement
         Number by which all elements, graded ones too, are shortened: another mesh to compare with.
 
@@ -113,7 +114,7 @@ def mesh_conductors(
     meet_points(legs, [p.points for p in files], shifts, tolerance)
     place_gaps(legs, gaps, tolerance)
 
-    pieces = files + [_wire_piece(leg, tolerance) for leg in legs]
+    pieces = files + [_wire_piece(leg, tolerance, grading) for leg in legs]
     if method == "structured":
         fixed = [p.points for p in files]
         graded = [grading and not _touches_others(s, sheets, fixed, shifts, tolerance) for s in sheets]
@@ -161,8 +162,8 @@ def _refuse_huge(sheets: Sequence[_FlatSheet], legs: Sequence[Leg], files: Seque
         )
 
 
-def _wire_piece(leg: Leg, tolerance: float) -> Piece:
-    points = leg.at(divide_leg(leg, tolerance))
+def _wire_piece(leg: Leg, tolerance: float, graded: bool) -> Piece:
+    points = leg.at(divide_leg(leg, tolerance, graded=graded))
     points[-1] = leg.end
     n = np.arange(len(points) - 1)
     return Piece(leg.conductor, points, segments=np.stack([n, n + 1], axis=1), radius=leg.wire.radius)

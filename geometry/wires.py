@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, field
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -11,8 +12,10 @@ from numpy.typing import NDArray
 from .conductor import Wire
 from .contact import half_of, parallel_overlap, segment_distance
 from .errors import InputError
+from .grading import EDGE_OF_GAP, EDGE_OF_SIZE, Interval
 from .port import Gap
 from .shapes import Region, place_of, wire_points
+from .structured import cell_count
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -22,7 +25,10 @@ STEEPEST_FOLD = np.cos(np.radians(15.0))
 
 @dataclass
 class Leg:
-    """One straight leg of a wire; `nodes` and `wishes`: where on it (m) nodes must and should be."""
+    """One straight leg of a wire; `nodes` and `wishes`: where on it (m) nodes must and should be.
+
+    Each wish comes with the width of its gap. Ends without a node of the list, off the ground, are open.
+    """
 
     wire: Wire
     index: int
@@ -31,7 +37,8 @@ class Leg:
     end: Floats
     size: float
     nodes: list[float] = field(default_factory=list)
-    wishes: list[float] = field(default_factory=list)
+    wishes: list[tuple[float, float]] = field(default_factory=list)
+    grounded: bool = False
 
     @property
     def length(self) -> float:
@@ -58,7 +65,7 @@ def legs_of(wires: Sequence[tuple[int, Wire, float]], ground: bool, tolerance: f
             points[np.abs(points[:, 2]) <= tolerance, 2] = 0.0
             _check_over_ground(wire, points)
         for k in range(len(points) - 1):
-            legs.append(Leg(wire, k + 1, conductor, points[k], points[k + 1], size))
+            legs.append(Leg(wire, k + 1, conductor, points[k], points[k + 1], size, grounded=ground))
     return legs
 
 
@@ -211,11 +218,24 @@ def place_gaps(legs: Sequence[Leg], gaps: Sequence[Gap], tolerance: float) -> No
                 if room < gap.width
                 else "",
             )
-        legs[inside[0]].wishes.append(float(along[inside[0]]))
+        legs[inside[0]].wishes.append((float(along[inside[0]]), gap.width))
 
 
-def divide_leg(leg: Leg, tolerance: float) -> Floats:
-    """Distances of all nodes along a leg, 0 to its length: segments of about `size`, none below two radii."""
+def open_ends(leg: Leg, tolerance: float) -> list[float]:
+    """Where on the leg (0, its length or both) the wire ends in the open."""
+    ends = []
+    for here, point in ((0.0, leg.start), (leg.length, leg.end)):
+        joined = any(abs(node - here) <= tolerance for node in leg.nodes)
+        if not joined and not (leg.grounded and point[2] == 0):
+            ends.append(here)
+    return ends
+
+
+def divide_leg(leg: Leg, tolerance: float, *, graded: bool = True) -> Floats:
+    """Distances of all nodes along a leg, 0 to its length: segments of about `size`, none below two radii.
+
+    `graded`: shorter segments at open ends and beside gaps, where the charge of the wire gathers.
+    """
     shortest = 2 * leg.wire.radius
     fixed = np.unique(np.clip([0.0, leg.length, *leg.nodes], 0, leg.length))
     fixed = fixed[np.concatenate([[True], np.diff(fixed) > tolerance])]
@@ -226,16 +246,29 @@ def divide_leg(leg: Leg, tolerance: float) -> Floats:
             where=place_of(leg.wire, "points"),
             allowed=f"at least {shortest:.4g} m (thin-wire model), or one common point",
         )
-    for wish in sorted(leg.wishes):
+    crowded = [(end, EDGE_OF_SIZE * leg.size) for end in open_ends(leg, tolerance)] if graded else []
+    for wish, width in sorted(leg.wishes):
         if np.abs(fixed - wish).min() >= shortest:
             fixed = np.sort(np.append(fixed, wish))
-    lengths = np.diff(fixed)
-    counts = np.ceil(lengths / leg.size - 1e-6).astype(int)
-    counts = np.clip(counts, 1, np.maximum(1, np.floor(lengths / shortest * (1 + 1e-9)).astype(int)))
-    if counts.sum() == 1:
-        counts[0] = 2
-    parts = [fixed[k] + lengths[k] * np.arange(n) / n for k, n in enumerate(counts)]
-    return np.concatenate([*parts, fixed[-1:]])
+        crowded += [(wish, EDGE_OF_GAP * width)] if graded else []  # at the node nearest to it
+    first = {
+        float(fixed[np.argmin(np.abs(fixed - x))]): max(cell, shortest * (1 + 1e-9)) for x, cell in crowded
+    }
+    parts = [
+        low + _divide(high - low, leg.size, shortest, first.get(low, np.inf), first.get(high, np.inf))[:-1]
+        for low, high in pairwise(fixed.tolist())
+    ]
+    nodes = np.concatenate([*parts, fixed[-1:]])
+    return nodes if len(nodes) > 2 else leg.length * np.array([0.0, 0.5, 1.0])
+
+
+def _divide(length: float, size: float, shortest: float, low: float, high: float) -> Floats:
+    """Nodes of a piece of wire, graded if that leaves no segment too short; both ends included."""
+    lines = Interval(length, size, low, high).lines()
+    if np.diff(lines).min() >= shortest * (1 - 1e-9):
+        return lines
+    most = max(1, int(np.floor(length / shortest * (1 + 1e-9))))
+    return np.linspace(0.0, length, min(cell_count(length, size), most) + 1)
 
 
 def meet_points(legs: Sequence[Leg], points: Sequence[Floats], shifts: Floats, tolerance: float) -> None:

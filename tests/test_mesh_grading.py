@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from cells import FREQUENCY, make, point, sheet_gap, strip_dipole
+from cells import FREQUENCY, make, point, sheet_gap, strip_dipole, wire_dipole
 from mesh_samples import (
     MM,
     SQUARE,
@@ -17,6 +17,7 @@ from mesh_samples import (
     sheet_parts,
     strip,
     wire,
+    wire_gap,
 )
 from mesh_samples import sheet_gap as gap_mm
 from reference_slab import SheetStack
@@ -164,6 +165,26 @@ def test_refinement_changes_every_cell(factor):
     assert other.mesh.triangle_areas.sum() == pytest.approx(base.mesh.triangle_areas.sum(), rel=1e-12)
 
 
+def test_wires_are_graded_at_open_ends_and_gaps_alone():
+    """From the ground up: even; at the gap and the open top: two radii, the shortest segment allowed."""
+    mesh = build(
+        wire("mast", (0, 0, 0), (0, 0, 12)), wire("rod", (0, 0, 12), (9, 0, 12)), gaps=[wire_gap((0, 0, 5))]
+    )
+    z = np.sort(np.unique(np.round(mesh.points[:, 2] / MM, 6)))
+    near = int(np.flatnonzero(z == 5)[0])
+    assert z[1] > 1.2 and z[-1] - z[-2] > 1.2
+    assert np.diff(z)[near - 1 : near + 1] == pytest.approx(0.4)
+    x = np.sort(mesh.points[mesh.points[:, 2] > 11.999 * MM, 0]) / MM
+    assert x[1] - x[0] > 1.2 and x[-1] - x[-2] == pytest.approx(0.4)
+    even = build(wire("rod", (0, 0, 12), (9, 0, 12)), grading=False)
+    assert even.segment_lengths == pytest.approx(np.full(5, 1.8 * MM))
+
+
+def test_wire_through_the_cell_is_even():
+    mesh = build(wire("bar", (-13.5, 0, 9), (13.5, 0, 9)), lattice=SQUARE)
+    np.testing.assert_allclose(mesh.segment_lengths, 27 / 14 * MM)
+
+
 def impedance(cell, theta, phi):
     scan = ScanPoints.from_angles(np.radians(theta), np.radians(phi))
     return solve_sweep(cell, [FREQUENCY], scan).impedance[0, :, 0, 0]
@@ -198,3 +219,11 @@ def test_plate_at_the_default_size_is_accurate():
         )
     ]
     assert np.abs(z / np.array(exact) - 1).max() < 0.02
+
+
+def test_wire_at_the_default_size_is_accurate():
+    """SECOND METHOD (checks.md section 3): wire .47, radius .0025 over ground, elements of lambda/20; 3 % of |Z|
+    (even segments of that size: 7 to 9 %, and 1.5 % at the thin-wire limit)."""
+    z = impedance(wire_dipole(size=0.05), [0, 40, 40, 40], [0, 0, 90, 45])
+    given = [147.08 - 38.35j, 86.10 - 12.15j, 208.83 + 40.86j, 136.65 + 7.56j]
+    assert np.abs(z / np.array(given) - 1).max() < 0.03
