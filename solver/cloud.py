@@ -48,15 +48,11 @@ def triangle_weights(triangles: Floats, n: int = TRIANGLE_POINTS) -> tuple[Float
     """Points (n_t, q, 3), weighted shapes (n_t, q, 3 shapes, 3) and weighted divergences (n_t, q, 3 shapes)."""
     nodes, weights = quadrature.triangle(n)
     points = np.einsum("qa,tac->tqc", nodes, triangles)
-    vector = (
-        0.5 * (points[:, :, None, :] - triangles[:, None]) * weights[None, :, None, None]
-    )  # the area cancels
+    vector = 0.5 * (points[:, :, None, :] - triangles[:, None]) * weights[None, :, None, None]  # the area cancels
     return points, vector, np.broadcast_to(weights[None, :, None], (*points.shape[:2], 3))
 
 
-def segment_weights(
-    segments: Floats, rule: tuple[Floats, Floats] | None = None
-) -> tuple[Floats, Floats, Floats]:
+def segment_weights(segments: Floats, rule: tuple[Floats, Floats] | None = None) -> tuple[Floats, Floats, Floats]:
     """Points (n_s, q, 3), weighted shapes (n_s, q, 2 shapes, 3) and weighted derivatives (n_s, q, 2 shapes)."""
     g, w = rule or quadrature.gauss(SEGMENT_POINTS)
     along = segments[:, 1] - segments[:, 0]
@@ -104,14 +100,20 @@ def build_cloud(basis: Basis) -> Cloud:
     vector = np.concatenate([part[1].reshape(-1, 3) for part in parts])
     charge = np.concatenate([part[2].ravel() for part in parts])
     size = (point_start, shape_start)
-    to_function = basis.coefficients
+
+    def by_function(values: Floats) -> sparse.csr_matrix:
+        """Shapes to functions; a component that is nowhere (vertical currents on flat conductors) has no entries."""
+        matrix = sparse.csr_matrix(sparse.csr_matrix((values, index), shape=size) @ basis.coefficients)
+        largest = float(np.abs(matrix.data).max(initial=0.0))
+        matrix.data[np.abs(matrix.data) < 1e-14 * max(largest, scale)] = 0.0
+        matrix.eliminate_zeros()
+        return matrix
+
+    scale = float(np.abs(vector).max(initial=0.0))
     return Cloud(
         np.concatenate([part[0].reshape(-1, 3) for part in parts]),
         np.concatenate(elements),
-        tuple(
-            sparse.csr_matrix(sparse.csr_matrix((vector[:, c], index), shape=size) @ to_function)
-            for c in range(3)
-        ),
-        sparse.csr_matrix(sparse.csr_matrix((charge, index), shape=size) @ to_function),
+        tuple(by_function(vector[:, c]) for c in range(3)),
+        by_function(charge),
         basis.n,
     )

@@ -45,7 +45,7 @@ def choose_split(
 
     With ``x^2 = ln(1/tolerance)``: near pairs end where ``exp(-R^2 E^2)`` and Floquet waves where
     ``exp(-(k_t^2 - k^2)/(4 E^2))`` reach the tolerance, so ``R = x/E`` and ``k_t = 2 E x``; the powers end
-    where ``(k/2E)^(2p) / (p! (2p-1))`` does. E defaults to c / sqrt(S), c = 5 for horizontal conductors and 3.5
+    where ``(k/2E)^(2p) / (p! (2p-1))`` does. E defaults to c / sqrt(S), c = 4.7 for horizontal conductors and 3.5
     where the share `tall` of vertical ones is large (measured: balances the cost of filling against that of each
     scan point; the waves needed grow with E^2, the levels of tall cells with E), raised to k_max/1.4 for cells large
     against the wavelength, where a smaller
@@ -54,7 +54,7 @@ def choose_split(
     e = (
         splitting
         if splitting is not None
-        else max((5.0 - 1.5 * min(1.0, 4 * tall)) / np.sqrt(area), k_max / 1.4)
+        else max((4.7 - 1.2 * min(1.0, 4 * tall)) / np.sqrt(area), k_max / 1.4)
     )
     x = np.sqrt(np.log(1 / tolerance))
     ratio, powers = (k_max / (2 * e)) ** 2, 2

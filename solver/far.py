@@ -26,6 +26,7 @@ Complexes = NDArray[np.complex128]
 Ints = NDArray[np.int64]
 
 MAX_EXACT_LEVELS = 6
+BLOCK = 128
 IMAGE_SIGN = (-1.0, -1.0, 1.0, -1.0)  # x, y, z current and charge in the ground's mirror
 
 
@@ -165,6 +166,7 @@ class FarPart:
         components = [*cloud.current, cloud.charge]
         self.transforms = [[_Transform(component, layer) for component in components] for layer in self.layers]
         self._phases = _PhaseTable(cloud.points[:, :2], lattice)
+        self._triangle: Complexes | None = None
 
     @property
     def n_level(self) -> int:
@@ -226,16 +228,37 @@ class FarPart:
         for columns, field_list, kernel_list in parts.values():
             field, kernel = np.concatenate(field_list), np.concatenate(kernel_list)
             reactive = np.abs(np.real(kernel)) <= 1e-14 * np.abs(kernel)
-            product = _hermitian(field[reactive], np.imag(kernel)[reactive])
-            product = 1j * product
             rest = ~reactive
+            target = matrix if len(columns) == self.n else np.zeros((len(columns), len(columns)), dtype=complex)
+            self._add_hermitian(target, field[reactive], np.imag(kernel)[reactive])
             if rest.any():
-                product += field[rest].conj().T @ (kernel[rest, None] * field[rest])
-            _add_at(matrix, columns, columns, product)
+                target += field[rest].conj().T @ (kernel[rest, None] * field[rest])
+            if target is not matrix:
+                matrix[np.ix_(columns, columns)] += target
 
-    def level_kernels(
-        self, k: float, square: Floats, z: Floats, other: Floats
-    ) -> tuple[Complexes, Complexes]:
+    def _add_hermitian(self, target: Complexes, field: Complexes, weight: Floats) -> None:
+        """Add ``j field^H diag(weight) field`` with real weights, by rank-k updates of one triangle."""
+        n = field.shape[1]
+        if self._triangle is None or len(self._triangle) != n:
+            self._triangle = np.zeros((n, n), dtype=complex, order="F")
+        work = self._triangle
+        work.fill(0.0)
+        for sign, pick in ((1.0, weight > 0), (-1.0, weight < 0)):
+            if pick.any():
+                scaled = np.sqrt(np.abs(weight[pick]))[:, None] * field[pick]
+                work = zherk(sign, scaled.T, beta=1.0, c=work, overwrite_c=True)
+        lower = work.T  # the upper triangle of the transpose
+        lower[np.arange(n), np.arange(n)] *= 0.5
+        starts = range(0, n, BLOCK)  # block by block, since a whole transpose would miss the cache at every step
+        for i in starts:
+            rows = slice(i, i + BLOCK)
+            for j in range(0, i + 1, BLOCK):
+                columns = slice(j, j + BLOCK)
+                block = 1j * lower[rows, columns]
+                target[rows, columns] += block
+                target[columns, rows] -= block.conj().T
+
+    def level_kernels(self, k: float, square: Floats, z: Floats, other: Floats) -> tuple[Complexes, Complexes]:
         """D between levels, direct and through the ground, each (n_mode, n_level, n_level)."""
         square = square[:, None, None]
         direct = far_kernel(k, square, z[:, None] - other, self.split, self.lattice.area)
@@ -249,18 +272,6 @@ def _add_at(matrix: Complexes, rows: Ints, columns: Ints, product: Complexes) ->
         matrix += product
     else:
         matrix[np.ix_(rows, columns)] += product
-
-
-def _hermitian(field: Complexes, weight: Floats) -> Complexes:
-    """``field^H diag(weight) field`` with real weights, by rank-k updates of one triangle."""
-    n = field.shape[1]
-    result = np.zeros((n, n), dtype=complex, order="F")
-    for sign, pick in ((1.0, weight > 0), (-1.0, weight < 0)):
-        if pick.any():
-            scaled = np.sqrt(np.abs(weight[pick]))[:, None] * field[pick]
-            result = zherk(sign, scaled.T, beta=1.0, c=result, overwrite_c=True)  # upper triangle of the transpose
-    lower = result.T
-    return np.where(np.tri(n, dtype=bool), lower, lower.conj().T)
 
 
 class _PhaseTable:

@@ -21,7 +21,7 @@ from .threads import thread_count
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-TILE = 192  # observers handled at a time, chosen close together
+TILE = 128  # observers handled at a time, chosen close together
 
 
 @dataclass(frozen=True)
@@ -40,24 +40,25 @@ class NearBlock:
 
 def build_near(basis: Basis, cloud: Cloud, lattice: Lattice, split: Split, rays: list[Ray]) -> list[NearBlock]:
     """Fill the near part. Cells of one half-plane only; the matrix at -m is the transpose of that at m."""
-    corrections = build_corrections(basis, lattice, rays)
     extent = float(np.linalg.norm(np.ptp(cloud.points[:, :2], axis=0)))
-    cells = {(int(p), int(q)) for p, q in half_cells(lattice, split.near_radius + extent)} | set(corrections)
+    cells = [(int(p), int(q)) for p, q in half_cells(lattice, split.near_radius + extent)]
     tiles = _tiles_by_height(cloud.points, rays)
-
-    def fill(cell: Cell) -> NearBlock | None:
-        shift = np.append(lattice.positions(np.array([cell]))[0], 0.0)
-        current, charge = _point_sums(cloud, tiles, shift, split, rays)
-        missed = corrections.get(cell, ([], []))
-        for part, matrices in ((current, missed[0]), (charge, missed[1])):
-            for p, matrix in enumerate(matrices):
-                rows, columns = matrix.nonzero()
-                part[p][rows, columns] += np.asarray(matrix[rows, columns]).ravel()
-        return _compressed(cell, current, charge)
-
-    order = sorted(cells, key=lambda m: (m != (0, 0), m))
     with ThreadPoolExecutor(thread_count()) as pool:  # the array operations inside release the interpreter lock
-        return [block for block in pool.map(fill, order) if block is not None]
+        corrections = pool.submit(build_corrections, basis, lattice, rays)
+
+        def fill(cell: Cell) -> NearBlock | None:
+            shift = np.append(lattice.positions(np.array([cell]))[0], 0.0)
+            current, charge = _point_sums(cloud, tiles, shift, split, rays)
+            missed = corrections.result().get(cell, ([], []))
+            for part, matrices in ((current, missed[0]), (charge, missed[1])):
+                for p, matrix in enumerate(matrices):
+                    rows, columns = matrix.nonzero()
+                    part[p][rows, columns] += np.asarray(matrix[rows, columns]).ravel()
+            return _compressed(cell, current, charge)
+
+        blocks = list(pool.map(fill, cells))
+        blocks += [fill(cell) for cell in corrections.result() if cell not in cells]
+    return [block for block in blocks if block is not None]
 
 
 def _compressed(cell: Cell, current: NDArray, charge: NDArray) -> NearBlock | None:
