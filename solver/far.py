@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 from scipy import sparse
-from scipy.linalg.blas import zherk
+from scipy.linalg.blas import zgemm, zherk
 
 from ..geometry.errors import InputError
 from ..geometry.lattice import Lattice
@@ -230,9 +230,10 @@ class FarPart:
             reactive = np.abs(np.real(kernel)) <= 1e-14 * np.abs(kernel)
             rest = ~reactive
             target = matrix if len(columns) == self.n else np.zeros((len(columns), len(columns)), dtype=complex)
-            self._add_hermitian(target, field[reactive], np.imag(kernel)[reactive])
-            if rest.any():
-                target += field[rest].conj().T @ (kernel[rest, None] * field[rest])
+            self._add_hermitian(target, field, np.where(reactive, np.imag(kernel), 0.0))
+            if rest.any():  # target += field^H kernel field in place: the transpose is what BLAS calls a matrix
+                few = field[rest]
+                zgemm(1.0, (kernel[rest, None] * few).T, few.conj(), beta=1.0, c=target.T, overwrite_c=True)
             if target is not matrix:
                 matrix[np.ix_(columns, columns)] += target
 
