@@ -16,7 +16,7 @@ from cells import (
     wire_dipole,
     wire_gap,
 )
-from scanward.geometry.conductor import Material, Strip
+from scanward.geometry.conductor import Material, Strip, Wire
 from scanward.geometry.errors import InputError
 from scanward.geometry.port import Load
 from scanward.solver.gaps import GapFunctional
@@ -95,19 +95,34 @@ def test_uniform_current_loses_length_times_resistance():
     lossless = Strip(name="bar", start=bar.start, end=bar.end, width=0.1)
     gap = sheet_gap((0, 0, 0), 0.05, 0.1)
     z = [
-        solve_sweep(
-            make([b], [gap], size=0.1), [0.02 * FREQUENCY], ScanPoints.from_angles(0.0, 0.0)
-        ).impedance[0, 0, 0, 0]
+        solve_sweep(make([b], [gap], size=0.1), [0.02 * FREQUENCY], ScanPoints.from_angles(0.0, 0.0)).impedance[
+            0, 0, 0, 0
+        ]
         for b in (bar, lossless)
     ]
     assert (z[0] - z[1]).real == pytest.approx(50 * 0.5 / 0.1, rel=0.01)
 
 
+def test_uniform_current_in_a_wire_loses_length_times_resistance():
+    """The same for a wire that joins its copies: R = R' L. CLOSED"""
+    ends = np.stack([point(-0.25, 0, 0), point(0.25, 0, 0)])
+    wires = [
+        Wire(name="bar", points=ends, radius=0.004, material=m) for m in (Material(wire_resistance=80.0), Material())
+    ]
+    broadside = ScanPoints.from_angles(0.0, 0.0)
+    z = [
+        solve_sweep(make([w], [wire_gap((0, 0, 0), 0.02, 0.004)], size=0.05), [0.02 * FREQUENCY], broadside).impedance[
+            0, 0, 0, 0
+        ]
+        for w in wires
+    ]
+    assert (z[0] - z[1]).real == pytest.approx(80.0 * 0.5, rel=2e-3)
+
+
 def test_lossy_probe_and_plate_balance():
     cell = probe_fed_plate(0.06)
     materials = tuple(
-        Material(sheet_resistance=1.0) if n == "plate" else Material(wire_resistance=50.0)
-        for n in cell.mesh.names
+        Material(sheet_resistance=1.0) if n == "plate" else Material(wire_resistance=50.0) for n in cell.mesh.names
     )
     object.__setattr__(cell.mesh, "materials", materials)
     accepted, radiated, lost = balance(solve_sweep(cell, [FREQUENCY], SCAN))
