@@ -21,6 +21,15 @@ leaves nothing behind where a conductor crosses an interface; in formulations A 
 each crossing carries a line charge of its own. K_tz, K_zt and K_zz do jump (eps, mu), so no set of
 interpolation levels may straddle an interface.
 
+What the solver uses is the same form with one more integration by parts (`symmetric_kernels`): there ``k_t . J_t``
+is written as charge less ``dJ_z/dz``, and both mixed kernels become one between charges and vertical currents,
+
+    j k eta [ <J_t, K_A J_t> + <J_z, K_v J_z> + <d, K_c J_z> + <J_z, K_c^T d> ] + (eta / j k) <d, K_Q d>
+    K_c = mu' (V_v^TM - V_v^TE) / k_t^2,      K_v = -j k eta mu mu' (I_v^TM - I_v^TE) / k_t^2
+
+Without magnetic layers all four are continuous through every interface (a sheet excepted), and K_v behaves for large
+k_t as in air. The boundary terms vanish: V_v is continuous in z and zero on the ground.
+
 `vertical_correction` gives the same field with K_tz moved into the scalar potential (K_phi^z = P_z).
 
 All are even in k_t and finite at k_t = 0. In air they reduce to ``exp(-j kz |z - z'|) / (2 j kz)`` and its
@@ -78,6 +87,33 @@ def horizontal_kernels(
 
 def _horizontal(lines: Lines) -> tuple[Complexes, Complexes]:
     return lines.vi("TE") / (1j * lines.k * ETA), (1j * lines.k / ETA) * lines.vi("difference")
+
+
+@dataclass(frozen=True)
+class SymmetricKernels:
+    """The four kernels the moment matrix is made of, each (n_kt, n_z, n_z); see the module's formulas.
+
+    Attributes
+    ----------
+    a, q, v : K_A, K_Q and K_v, m, symmetric
+    c : K_c between a charge at the first height and a vertical current at the second, m^2
+    """
+
+    a: Complexes
+    q: Complexes
+    v: Complexes
+    c: Complexes
+
+
+def symmetric_kernels(stack: Stack, k: float, kt: ArrayLike, z: ArrayLike) -> SymmetricKernels:
+    """Kernels between heights z (n_z,), m, none of them on the border of a magnetic layer or on a sheet.
+
+    Parameters as for `horizontal_kernels`.
+    """
+    lines = Lines(stack, k, kt, z)
+    mu = stack.permeability[stack.region_at(lines.z)]
+    v = (-1j * k * ETA) * mu[:, None] * mu * lines.iv("difference")
+    return SymmetricKernels(*_horizontal(lines), v, mu * lines.vv("difference"))
 
 
 def layered_kernels(

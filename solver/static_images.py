@@ -15,8 +15,6 @@ smaller by ``k/k_t`` only.
 
 from __future__ import annotations
 
-import heapq
-from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
@@ -24,12 +22,11 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from ..geometry.stack import Side, Stack
+from .bounces import trace
 from .lines import sections
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[Any]
-
-MAX_RAYS = 100_000
 
 
 @dataclass(frozen=True)
@@ -93,7 +90,7 @@ def quasi_static_images(
     Raises
     ------
     ValueError
-        If more than `MAX_RAYS` rays are needed: lower `d_max` or raise `smallest`.
+        If more than `bounces.MAX_RAYS` rays are needed: lower `d_max` or raise `smallest`.
     """
     here, there = float(stack.snap(z)), float(stack.snap(z_prime))
     region, region_s = int(stack.region_at(here, side)), int(stack.region_at(there, source_side))
@@ -106,7 +103,11 @@ def quasi_static_images(
     none = np.zeros_like(shorts)
 
     def rays(impedance: Complexes, mirror: float, sheets: NDArray[np.bool_]) -> Images:
-        return _trace(stack, here, there, impedance, mirror, sheets, reach, smallest)
+        found = trace(stack, here, there, impedance, mirror, sheets, reach, smallest)
+        return _merge(
+            np.array([bounce.amplitude for bounce in found], dtype=complex),
+            np.array([bounce.distance for bounce in found], dtype=float),
+        )
 
     tm_current, te_current = rays(medium_eps, 1.0, shorts), rays(1 / medium_mu, 1.0, none)
     ratio = mu[region_s] / eps[region] + mu[region] / eps[region_s]
@@ -128,102 +129,6 @@ def _first_reflections(stack: Stack, z: float, z_prime: float) -> float:
     if (above := nodes[nodes > high]).size:
         paths.append(2 * above[0] - high - low)
     return max(paths) * (1 + 1e-12)
-
-
-def _trace(
-    stack: Stack,
-    z: float,
-    z_prime: float,
-    impedance: Complexes,
-    mirror: float,
-    sheets: NDArray[np.bool_],
-    reach: float,
-    smallest: float,
-) -> Images:
-    """Follow rays of a unit source, nearest first; rays that meet again (same place, distance, direction)
-    are added.
-
-    A ray is (path so far, section it travels in, direction); it starts at one end of its section. `mirror`
-    is the reflection at the ground, `sheets` marks sections whose lower end reflects -mirror-wise as an
-    opaque sheet.
-    """
-    parts = sections(stack)
-    lows, highs = np.array([s.low for s in parts]), np.array([s.high for s in parts])
-    start = int(np.searchsorted(lows, z_prime, side="right")) - 1
-    receiver = int(np.searchsorted(lows, z, side="right")) - 1
-    grain = 1e-9 * max(stack.top, abs(z - z_prime), 1e-300)
-    pending: dict[tuple[int, int, int], complex] = {}
-    queue: list[tuple[int, int, int]] = []
-    path: dict[tuple[int, int, int], float] = {}
-    found: list[tuple[complex, float]] = []
-
-    def launch(amplitude: complex, distance: float, section: int, direction: int) -> None:
-        if amplitude == 0 or distance > reach:
-            return
-        key = (round(distance / grain), section, direction)
-        if key not in pending:
-            heapq.heappush(queue, key)
-            pending[key], path[key] = 0j, distance
-        pending[key] += amplitude
-
-    # as if both rays had started at the far ends of the source's section: only the distance beyond z' counts
-    unit = complex(impedance[start])
-    if receiver == start:
-        found.append((unit, abs(z - z_prime)))
-    for direction in (1, -1):
-        _arrive(
-            unit,
-            direction,
-            start,
-            abs((highs if direction > 0 else lows)[start] - z_prime),
-            impedance,
-            mirror,
-            sheets,
-            launch,
-        )
-    count = 0
-    while queue:
-        key = heapq.heappop(queue)
-        amplitude, distance = pending.pop(key), path.pop(key)
-        _, section, direction = key
-        if abs(amplitude) < smallest * abs(unit):
-            continue
-        count += 1
-        if count > MAX_RAYS:
-            raise ValueError(f"more than {MAX_RAYS} images within {reach:g} m; lower d_max or raise smallest")
-        origin = lows[section] if direction > 0 else highs[section]
-        if section == receiver and distance + abs(z - origin) <= reach:
-            found.append((amplitude, distance + abs(z - origin)))
-        onward = distance + highs[section] - lows[section]
-        _arrive(amplitude, direction, section, onward, impedance, mirror, sheets, launch)
-    amplitudes, distances = zip(*found, strict=True) if found else ((), ())
-    return _merge(np.array(amplitudes, dtype=complex), np.array(distances, dtype=float))
-
-
-def _arrive(
-    amplitude: complex,
-    direction: int,
-    section: int,
-    distance: float,
-    impedance: Complexes,
-    mirror: float,
-    sheets: NDArray[np.bool_],
-    launch: Callable[[complex, float, int, int], None],
-) -> None:
-    """Reflect and transmit a ray at the end of its section."""
-    beyond = section + direction
-    if not np.isfinite(distance):
-        return
-    if beyond < 0:
-        launch(mirror * amplitude, distance, section, -direction)
-        return
-    if sheets[section + 1 if direction > 0 else section]:
-        launch(mirror * amplitude, distance, section, -direction)
-        return
-    one, other = impedance[section], impedance[beyond]
-    reflected = (other - one) / (other + one)
-    launch(reflected * amplitude, distance, section, -direction)
-    launch((1 + reflected) * amplitude, distance, beyond, direction)
 
 
 def _merge(amplitude: Complexes, distance: Floats) -> Images:

@@ -88,6 +88,6 @@ def test_sheets_screen_charges_and_not_currents():
 
 
 def test_too_many_rays_are_refused(monkeypatch):
-    monkeypatch.setattr("scanward.solver.static_images.MAX_RAYS", 50)
+    monkeypatch.setattr("scanward.solver.bounces.MAX_RAYS", 50)
     with pytest.raises(ValueError, match="more than 50 images"):
         quasi_static_images(STACK, 0.02, 0.02, d_max=5.0, smallest=0.0)
