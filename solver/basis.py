@@ -81,9 +81,7 @@ class _Builder:
         self.tables: dict[str, dict[tuple, int]] = {"triangle": {}, "segment": {}, "fan": {}}
         for kind, count in (("triangle", len(mesh.triangles)), ("segment", len(mesh.segments))):
             self.tables[kind] = {(i, 0, 0): i for i in range(count)}
-        self.entries: list[
-            tuple[str, int, int, float]
-        ] = []  # element kind, element, local shape, coefficient
+        self.entries: list[tuple[str, int, int, float]] = []  # element kind, element, local shape, coefficient
         self.columns: list[int] = []
         self.kinds: list[str] = []
 
@@ -105,9 +103,7 @@ class _Builder:
             return np.array([key[column] for key in place[kind]], dtype=np.int64)
 
         owner = {kind: pick(kind, 0) for kind in place}
-        shift = {
-            kind: self.lattice.positions(np.column_stack([pick(kind, 1), pick(kind, 2)])) for kind in place
-        }
+        shift = {kind: self.lattice.positions(np.column_stack([pick(kind, 1), pick(kind, 2)])) for kind in place}
 
         def displaced(kind: str, corners: Ints) -> Floats:
             points = mesh.points[corners]
@@ -242,10 +238,7 @@ def _add_nodes(builder: _Builder, ground: bool, tolerance: float) -> None:
             if int(label[point]) in wires:
                 sheets[int(label[point])].append((t, a, int(point)))
     for group, ends in wires.items():
-        halves = [
-            ("segment", (s, *map(int, shift[point])), end, 1.0 if end == 1 else -1.0)
-            for s, end, point in ends
-        ]
+        halves = [("segment", (s, *map(int, shift[point])), end, 1.0 if end == 1 else -1.0) for s, end, point in ends]
         grounded = ground and abs(mesh.points[ends[0][2], 2]) < tolerance
         if group in sheets:
             fans = _fan_halves(mesh, sheets[group], shift)
@@ -303,9 +296,7 @@ def _first_fans(basis: Basis) -> Ints:
     return first
 
 
-def surface_current(
-    basis: Basis, coefficients: NDArray[np.complex128], kt: Floats
-) -> tuple[NDArray, NDArray]:
+def surface_current(basis: Basis, coefficients: NDArray[np.complex128], kt: Floats) -> tuple[NDArray, NDArray]:
     """Current at the centres of the mesh's elements.
 
     Parameters

@@ -37,14 +37,9 @@ class Dispersion:
         slow = np.sqrt(np.abs(self.permittivity * self.permeability).max())
         sheets = self.shunt[self.shunt != 0]
         susceptance, size = np.abs(np.imag(sheets)), np.abs(sheets)
-        alone = (
-            2 * np.abs(self.permittivity).max() * susceptance / size**2
-            + susceptance * self.permeability.max()
-        )
+        alone = 2 * np.abs(self.permittivity).max() * susceptance / size**2 + susceptance * self.permeability.max()
         close = (
-            np.sqrt(2 * np.abs(self.permittivity).max() / size / self.length.min())
-            if len(self.length)
-            else 0 * size
+            np.sqrt(2 * np.abs(self.permittivity).max() / size / self.length.min()) if len(self.length) else 0 * size
         )
         return float(1.5 * (slow + 1) + (alone + close).sum())
 
@@ -112,9 +107,7 @@ class Dispersion:
         total = np.zeros(len(x) - 1)
         for n, length in enumerate(self.length):
             gamma = np.sqrt(x * x + 1 - self.permittivity[n] * self.permeability[n])
-            total += length * np.minimum(
-                np.abs(np.diff(gamma)), np.abs(gamma[1:] + gamma[:-1])
-            )  # either root serves
+            total += length * np.minimum(np.abs(np.diff(gamma)), np.abs(gamma[1:] + gamma[:-1]))  # either root serves
         return total
 
     def _susceptance(self, n: int, loss: float) -> complex:

@@ -51,11 +51,7 @@ def choose_split(
     against the wavelength, where a smaller
     E would cancel catastrophically (Capolino, Wilton, Johnson, J. Comp. Phys. 223, 250, 2007).
     """
-    e = (
-        splitting
-        if splitting is not None
-        else max((4.7 - 1.2 * min(1.0, 4 * tall)) / np.sqrt(area), k_max / 1.4)
-    )
+    e = splitting if splitting is not None else max((4.7 - 1.2 * min(1.0, 4 * tall)) / np.sqrt(area), k_max / 1.4)
     x = np.sqrt(np.log(1 / tolerance))
     ratio, powers = (k_max / (2 * e)) ** 2, 2
     while ratio**powers / factorial(powers) / (2 * powers - 1) > 0.1 * tolerance:

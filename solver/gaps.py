@@ -100,9 +100,7 @@ def _planes(gap: Gap, centre: Floats) -> list[tuple[Floats, float]]:
 def _candidates(corners: Floats, centre: Floats, gap: Gap) -> NDArray[np.int64]:
     middle = corners.mean(axis=1)
     radius = np.linalg.norm(corners - middle[:, None], axis=2).max(axis=1, initial=0.0)
-    return np.flatnonzero(
-        np.linalg.norm(middle - centre, axis=1) < radius + 0.5 * np.hypot(gap.width, gap.span) * 1.01
-    )
+    return np.flatnonzero(np.linalg.norm(middle - centre, axis=1) < radius + 0.5 * np.hypot(gap.width, gap.span) * 1.01)
 
 
 def _clip(polygon: Floats, planes: list[tuple[Floats, float]]) -> Floats:

@@ -178,9 +178,7 @@ def _follow(dispersion: Dispersion, x: complex) -> complex | None:
     return x
 
 
-def _newton(
-    dispersion: Dispersion, x: complex, loss: float = 1.0, known: Sequence[complex] = ()
-) -> complex | None:
+def _newton(dispersion: Dispersion, x: complex, loss: float = 1.0, known: Sequence[complex] = ()) -> complex | None:
     """Zero of W near x, `known` zeros divided out; None if 40 steps do not settle or lead out of the
     region."""
     zeros, move = np.array(known, dtype=complex), np.inf

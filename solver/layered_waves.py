@@ -144,9 +144,7 @@ def absorbed_power(
     source = np.atleast_1d(stack.snap(source))
     current = np.asarray(current, dtype=complex)
     if np.iscomplexobj(kt) or current.shape != (len(kt), len(source), 3):
-        raise ValueError(
-            f"current has shape {current.shape}, real kt and {(len(kt), len(source), 3)} are needed"
-        )
+        raise ValueError(f"current has shape {current.shape}, real kt and {(len(kt), len(source), 3)} are needed")
     lines = Lines(stack, k, kt, source)
     series = _vertical_source(stack, lines, source_side) * current[..., 2]
     sheets = np.array([float(stack.snap(sheet.height)) for sheet in stack.sheets])

@@ -60,9 +60,7 @@ class Trio:
         return Trio(self.te - other.te, self.tm - other.tm, self.difference - other.difference)
 
     def __mul__(self, other: Trio) -> Trio:
-        return Trio(
-            self.te * other.te, self.tm * other.tm, self.difference * other.tm + self.te * other.difference
-        )
+        return Trio(self.te * other.te, self.tm * other.tm, self.difference * other.tm + self.te * other.difference)
 
     def __truediv__(self, other: Trio) -> Trio:
         te = self.te / other.te
@@ -194,9 +192,7 @@ class Lines:
         n = len(self.sections)
         zero, one = np.zeros((len(self.kt), 1), dtype=complex), np.ones((len(self.kt), 1), dtype=complex)
         down = self.media[0]
-        start = (
-            (Trio(zero, zero, zero), Trio(-one, -one, zero)) if self.stack.ground else _half_space(down, -1.0)
-        )
+        start = (Trio(zero, zero, zero), Trio(-one, -one, zero)) if self.stack.ground else _half_space(down, -1.0)
         rising = [start]
         for i in range(1, n):
             wave = rising[-1]
@@ -313,9 +309,7 @@ def wave_impedance(k: float, kt: ArrayLike, p: Literal["TE", "TM"]) -> Complexes
     return ETA * (kz / k if p == "TM" else k / kz)
 
 
-def reflection(
-    stack: Stack, k: float, kt: ArrayLike, p: Literal["TE", "TM"], *, from_above: bool = True
-) -> Complexes:
+def reflection(stack: Stack, k: float, kt: ArrayLike, p: Literal["TE", "TM"], *, from_above: bool = True) -> Complexes:
     """Reflection coefficient of tangential E of the bare stack at its outer face (top, or z = 0 from below),
     (n_kt,).
 

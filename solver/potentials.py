@@ -12,9 +12,7 @@ from numpy.typing import NDArray
 Floats = NDArray[np.float64]
 
 
-def triangle_potentials(
-    triangles: Floats, points: Floats, softening: float | Floats = 0.0
-) -> tuple[Floats, Floats]:
+def triangle_potentials(triangles: Floats, points: Floats, softening: float | Floats = 0.0) -> tuple[Floats, Floats]:
     """Barycentric moments ``int lambda_a / R dS`` and the plain ``int 1/R dS`` of each triangle at each point.
 
     Parameters

@@ -59,15 +59,9 @@ class FloquetWaves:
 
     def index(self, order: tuple[int, int] = (0, 0), side: int = 1, polarisation: int = 0) -> int:
         """Position of one wave, or ValueError if the sweep does not track it."""
-        hit = (
-            (self.order == np.asarray(order)).all(1)
-            & (self.side == side)
-            & (self.polarisation == polarisation)
-        )
+        hit = (self.order == np.asarray(order)).all(1) & (self.side == side) & (self.polarisation == polarisation)
         if not hit.any():
-            raise ValueError(
-                f"Floquet wave order {order}, side {side}, polarisation {polarisation} is not tracked"
-            )
+            raise ValueError(f"Floquet wave order {order}, side {side}, polarisation {polarisation} is not tracked")
         return int(np.flatnonzero(hit)[0])
 
 

@@ -42,10 +42,7 @@ def _moments(a: Floats, b: Floats, rule_a: tuple, rule_b: tuple, kernel) -> Floa
     ua, ub = np.stack([1 - x, x], 1) * wx[:, None], np.stack([1 - y, y], 1) * wy[:, None]
     scale = np.linalg.norm(a[:, 1] - a[:, 0], axis=1) * np.linalg.norm(b[:, 1] - b[:, 0], axis=1)
     return np.stack(
-        [
-            np.einsum("qc,nqr,rd,n->ncd", ua, kernel(distance, p), ub, scale, optimize=True)
-            for p in range(POWERS)
-        ]
+        [np.einsum("qc,nqr,rd,n->ncd", ua, kernel(distance, p), ub, scale, optimize=True) for p in range(POWERS)]
     )
 
 
@@ -95,10 +92,7 @@ def _self_moments(length: float, radius: float, flipped: bool) -> Floats:
     overlap = np.einsum("q,cqt,dqt->cdt", wu, left, right) * (1 - t)
     overlap = overlap + overlap.transpose(1, 0, 2)
     result = np.stack(
-        [
-            overlap @ (w * tube_kernel(length * t, np.asarray(radius), np.asarray(radius), p))
-            for p in range(POWERS)
-        ]
+        [overlap @ (w * tube_kernel(length * t, np.asarray(radius), np.asarray(radius), p)) for p in range(POWERS)]
     )
     result *= length**2
     return result[:, :, ::-1] if flipped else result
@@ -145,9 +139,7 @@ def segment_rules(segments: Floats, corners: Floats, soft: Floats, end: NDArray[
         nodes, _ = quadrature.triangle(7)
         samples = np.concatenate([corners[i], nodes @ corners[i]])
         gap = end_distances(line[None], samples[None]).min()
-        rules.append(
-            quadrature.uniform(int(np.clip(np.ceil(size / max(gap, 1e-9 * size)), 1, MAX_PANELS)), 5)
-        )
+        rules.append(quadrature.uniform(int(np.clip(np.ceil(size / max(gap, 1e-9 * size)), 1, MAX_PANELS)), 5))
     return rules
 
 
@@ -172,14 +164,9 @@ def segment_triangle_products(segments: Floats, triangles: Floats, moments: Floa
     """Current and charge products (..., n, 2 segment shapes, 3 triangle shapes)."""
     along = segments[:, 1] - segments[:, 0]
     length = np.linalg.norm(along, axis=1)
-    area = 0.5 * np.linalg.norm(
-        np.cross(triangles[:, 1] - triangles[:, 0], triangles[:, 2] - triangles[:, 0]), axis=1
-    )
+    area = 0.5 * np.linalg.norm(np.cross(triangles[:, 1] - triangles[:, 0], triangles[:, 2] - triangles[:, 0]), axis=1)
     unit = along / length[:, None]
     dots = np.einsum("nc,ndc->nd", unit, triangles)
-    current = (
-        np.einsum("...nsd,nd->...ns", moments, dots)[..., None]
-        - moments.sum(-1)[..., None] * dots[:, None, :]
-    )
+    current = np.einsum("...nsd,nd->...ns", moments, dots)[..., None] - moments.sum(-1)[..., None] * dots[:, None, :]
     charge = (moments.sum(axis=(-1, -2)) / (length * area))[..., None, None] * np.array([[-1.0], [1.0]])
     return current / (2 * area)[:, None, None], np.broadcast_to(charge, current.shape)
