@@ -20,7 +20,7 @@ from .mesh_file import read_mesh_file
 from .port import Gap
 from .shapes import Region, Sheet, check_names, check_sheets_over_ground, place_of, region_of
 from .structured import disc_mesh, quadrilateral_mesh, rectangle_mesh, triangle_mesh
-from .wires import Leg, attach_to_sheets, divide_leg, legs_of, meet_points, meet_wires, place_gaps
+from .wires import Leg, attach_to_sheets, divide_leg, legs_of, meet_interfaces, meet_points, meet_wires, place_gaps
 
 Floats = NDArray[np.float64]
 METHODS = ("structured", "unstructured")
@@ -47,6 +47,7 @@ def mesh_conductors(
     method: str = "structured",
     grading: bool = True,
     refinement: float = 1.0,
+    interfaces: Sequence[float] = (),
 ) -> Mesh:
     """Mesh all conductors of a cell, connected where they touch.
 
@@ -73,6 +74,8 @@ def mesh_conductors(
         many times as many unknowns.
     refinement
         Number by which all elements, graded ones too, are shortened: another mesh to compare with.
+    interfaces
+        Heights of the borders between layers, m: wires that cross them get a node there.
 
     Raises
     ------
@@ -111,6 +114,7 @@ def mesh_conductors(
     shifts = lattice_shifts(lattice, np.concatenate(corners), margin)
     meet_wires(legs, shifts, tolerance)
     attached = attach_to_sheets(legs, [s.region for s in sheets], shifts, tolerance)
+    meet_interfaces(legs, interfaces, tolerance)
     meet_points(legs, [p.points for p in files], shifts, tolerance)
     place_gaps(legs, gaps, tolerance)
 

@@ -271,6 +271,16 @@ def _divide(length: float, size: float, shortest: float, low: float, high: float
     return np.linspace(0.0, length, min(cell_count(length, size), most) + 1)
 
 
+def meet_interfaces(legs: Sequence[Leg], heights: Sequence[float], tolerance: float) -> None:
+    """Put a node wherever a leg crosses one of the heights (m); ends that touch one stay what they are."""
+    for leg in legs:
+        rise = float(leg.end[2] - leg.start[2])
+        for height in heights:
+            away = np.sort([(height - leg.start[2]) * np.sign(rise), (leg.end[2] - height) * np.sign(rise)])
+            if rise and away[0] > tolerance:
+                leg.nodes.append(float((height - leg.start[2]) / rise * leg.length))
+
+
 def meet_points(legs: Sequence[Leg], points: Sequence[Floats], shifts: Floats, tolerance: float) -> None:
     """Put a node wherever a leg runs through a point of an imported mesh (n, 3), or of its periodic copy."""
     if not points:

@@ -20,6 +20,7 @@ from .pairs import NearPairs, end_distances, find_near_pairs
 from .rays import Ray
 from .triangle_pairs import POWERS, product_moments, shape_products, triangle_moments
 from .wire_pairs import segment_moments, segment_products, segment_triangle_moments, segment_triangle_products
+from .zones import Zoning
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -27,14 +28,14 @@ Cell = tuple[int, int]
 SHAPES = (3, 2, 1)  # shapes on a triangle, a segment, a fan
 
 
-def build_corrections(basis: Basis, lattice: Lattice, rays: list[Ray]) -> dict[Cell, tuple[list, list]]:
+def build_corrections(basis: Basis, lattice: Lattice, rays: list[Ray], zoning: Zoning) -> dict[Cell, tuple[list, list]]:
     """Corrections to the near matrices by cell: ``(current, charge)``, each POWERS sparse (n, n) matrices.
 
     Cells are those of `pairs.half_cells`; the matrix at (0, 0) is symmetric and complete, the one at -m is the
     transpose of that at m.
     """
     collected: dict[Cell, list] = defaultdict(list)
-    for group in find_near_pairs(basis, lattice, rays):
+    for group in find_near_pairs(basis, lattice, rays, zoning):
         shift = np.append(lattice.positions(np.array([group.cell]))[0], 0.0)
         collected[group.cell] += _group_entries(basis, group, shift)
     return {cell: _assemble(basis, cell, entries) for cell, entries in collected.items()}

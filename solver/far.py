@@ -15,17 +15,15 @@ from numpy.typing import NDArray
 from scipy import sparse
 from scipy.linalg.blas import zgemm, zherk
 
-from ..geometry.errors import InputError
 from ..geometry.lattice import Lattice
-from ..geometry.stack import Stack
 from .cloud import Cloud
 from .ewald import Split, far_kernel
+from .zones import Zoning
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 Ints = NDArray[np.int64]
 
-MAX_EXACT_LEVELS = 6
 BLOCK = 128
 IMAGE_SIGN = (-1.0, -1.0, 1.0, -1.0)  # x, y, z current and charge in the ground's mirror
 
@@ -38,72 +36,43 @@ class Layer:
     weights: sparse.csr_matrix
 
 
-def choose_layers(cloud: Cloud, split: Split, tolerance: float) -> list[Layer]:
-    """Exact layers for horizontal elements, one Chebyshev layer for the rest.
+@dataclass(frozen=True)
+class Coupling:
+    """A kernel between two components: 0, 1, 2 the x, y, z currents, 3 the charge.
+
+    `kernel` : (n_mode, n_level, n_level); `of_charges` : whether it goes with ``eta / j k`` instead of ``j k eta``
+    """
+
+    row: int
+    column: int
+    kernel: Complexes
+    of_charges: bool = False
+
+
+def choose_layers(cloud: Cloud, zoning: Zoning, split: Split, tolerance: float) -> list[Layer]:
+    """One exact level for a zone of one height, Chebyshev levels for the others.
 
     The kernel varies with z like ``exp(-z^2 E^2)``; the number of Chebyshev levels is the first at which interpolating
     ``exp(-(z - z')^2 E^2)`` between all heights meets the tolerance (tested on a fine grid).
     """
-    z = cloud.points[:, 2]
-    flat = _horizontal(cloud)
-    heights = _distinct(z[flat], 1e-9 / split.splitting)
-    if len(heights) > MAX_EXACT_LEVELS:
-        flat, heights = np.zeros_like(flat), heights[:0]
-    layers = [
-        Layer(
-            np.array([h]),
-            sparse.csr_matrix((flat & (np.abs(z - h) <= 2e-9 / split.splitting)).astype(float)[:, None]),
-        )
-        for h in heights
-    ]
-    if not flat.all():
-        levels = _chebyshev_levels(z[~flat], split, tolerance)
-        weights = np.zeros((len(z), len(levels)))
-        weights[~flat] = _barycentric_weights(levels, z[~flat])
+    z, zone = cloud.points[:, 2], zoning.of_element[cloud.element]
+    layers = []
+    for i, one in enumerate(zoning.zones):
+        mine = zone == i
+        levels = np.array([one.low])
+        weights = mine.astype(float)[:, None]
+        if not one.is_level:
+            levels = _chebyshev_levels(np.array([one.low, one.high]), split, tolerance)
+            weights = np.zeros((len(z), len(levels)))
+            weights[mine] = _barycentric_weights(levels, z[mine])
         layers.append(Layer(levels, sparse.csr_matrix(weights)))
     return layers
 
 
-def _horizontal(cloud: Cloud) -> NDArray[np.bool_]:
-    """Points of elements that lie at one height."""
-    n = int(cloud.element.max()) + 1
-    low, high = np.full(n, np.inf), np.full(n, -np.inf)
-    np.minimum.at(low, cloud.element, cloud.points[:, 2])
-    np.maximum.at(high, cloud.element, cloud.points[:, 2])
-    size = float(np.ptp(cloud.points, axis=0).max())
-    return (high - low < 1e-10 * size)[cloud.element]
-
-
-def layered_heights(layers: list[Layer], stack: Stack) -> Floats:
-    """Heights of the conductors in a layered stack.
-
-    Raises
-    ------
-    InputError
-        If a conductor is not horizontal, stands at too many heights, or lies below the stack.
-    """
-    where = "[[conductor]]"
-    if any(len(layer.heights) != 1 for layer in layers):
-        raise InputError(
-            "in a layered stack a conductor is vertical or tilted, or there are too many heights.",
-            where=where,
-            allowed=f"horizontal strips, plates and wires at up to {MAX_EXACT_LEVELS} heights in this version",
-        )
-    heights = np.array([layer.heights[0] for layer in layers])
-    if stack.ground and heights.min() <= 0:
-        lowest = f"a conductor lies at z = {heights.min():g} m."
-        raise InputError(lowest, where=where, allowed="heights above the ground")
-    return heights
-
-
-def tall_fraction(cloud: Cloud) -> float:
+def tall_fraction(cloud: Cloud, zoning: Zoning) -> float:
     """Share of the points on vertical or tilted conductors, which need Chebyshev levels."""
-    return 1.0 - float(_horizontal(cloud).mean())
-
-
-def _distinct(z: Floats, tolerance: float) -> Floats:
-    z = np.sort(z)
-    return z[np.concatenate([[True], np.diff(z) > tolerance])] if len(z) else z
+    flat = np.array([zone.is_level for zone in zoning.zones])
+    return 1.0 - float(flat[zoning.of_element[cloud.element]].mean())
 
 
 def _chebyshev_levels(z: Floats, split: Split, tolerance: float) -> Floats:
@@ -183,35 +152,38 @@ class FarPart:
         phase = np.exp(1j * (self.points[:, :2] @ kt))[:, None] * self._phases(orders)
         fields = [[t(phase) if len(t.columns) else None for t in layer] for layer in self.transforms]
         square = (self.lattice.harmonics(orders, kt) ** 2).sum(axis=1)
-        scales = (current_scale, current_scale, current_scale, charge_scale)
+        scales = (current_scale, charge_scale)
         matrix = np.zeros((self.n, self.n), dtype=complex)
-        for (a, b), components in self.component_kernels(k, square).items():
-            kernels = [scale * kernel for scale, kernel in zip(scales, components, strict=True)]
+        for (a, b), couplings in self.component_kernels(k, square).items():
+            scaled = [(c.row, c.column, scales[c.of_charges] * c.kernel) for c in couplings]
             if a == b and len(self.layers[a].heights) == 1:
-                self._add_flat(matrix, a, [kernel[:, 0, 0] for kernel in kernels], fields[a])
+                self._add_flat(matrix, a, [kernel[:, 0, 0] for _, _, kernel in scaled], fields[a])
             else:
-                self._add_pair(matrix, a, b, kernels, fields[a], fields[b])
+                self._add_pair(matrix, a, b, scaled, fields[a], fields[b])
         return matrix
 
-    def component_kernels(self, k: float, square: Floats) -> dict[tuple[int, int], list[Complexes]]:
-        """D for x, y, z currents and charges by pair of layers, each (n_mode, n_level, n_level)."""
+    def component_kernels(self, k: float, square: Floats) -> dict[tuple[int, int], list[Coupling]]:
+        """D between the components of every pair of layers; of one level with itself in the order x, y, z, charge."""
         result = {}
         for a, one in enumerate(self.layers):
             for b, other in enumerate(self.layers):
                 direct, image = self.level_kernels(k, square, one.heights, other.heights)
-                result[a, b] = [direct + sign * image if self.ground else direct for sign in IMAGE_SIGN]
+                result[a, b] = [
+                    Coupling(c, c, direct + sign * image if self.ground else direct, c == 3)
+                    for c, sign in enumerate(IMAGE_SIGN)
+                ]
         return result
 
-    def _add_pair(self, matrix: Complexes, a: int, b: int, kernels: list, left: list, right: list) -> None:
+    def _add_pair(self, matrix: Complexes, a: int, b: int, couplings: list, left: list, right: list) -> None:
         """``G_a^H D G_b`` for any two layers; components with the same functions in one product."""
         parts: dict[bytes, tuple[Ints, Ints, list, list]] = {}
-        for c in range(4):
-            if left[c] is None or right[c] is None:
+        for row, column, kernel in couplings:
+            if left[row] is None or right[column] is None:
                 continue
-            rows, columns = self.transforms[a][c].columns, self.transforms[b][c].columns
+            rows, columns = self.transforms[a][row].columns, self.transforms[b][column].columns
             part = parts.setdefault(rows.tobytes() + b"|" + columns.tobytes(), (rows, columns, [], []))
-            part[2].append(left[c].reshape(-1, len(rows)))
-            part[3].append((kernels[c] @ right[c]).reshape(-1, len(columns)))
+            part[2].append(left[row].reshape(-1, len(rows)))
+            part[3].append((kernel @ right[column]).reshape(-1, len(columns)))
         for rows, columns, lefts, rights in parts.values():
             _add_at(matrix, rows, columns, np.concatenate(lefts).conj().T @ np.concatenate(rights))
 

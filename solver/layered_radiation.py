@@ -1,4 +1,4 @@
-"""Radiation of horizontal currents in a layered stack into Floquet waves, and what the layers absorb.
+"""Radiation of currents in a layered stack into Floquet waves, and what the layers absorb.
 
 Amplitudes follow `waves.radiation`: power waves per cell, phase reference z = 0.
 """
@@ -29,16 +29,18 @@ def point_heights(cloud: Cloud) -> tuple[Floats, NDArray[np.int64]]:
 
 
 def directed_transforms(cloud: Cloud, waves: Floats, angle: Floats) -> Complexes:
-    """``int f e^(+j k_t . rho)`` along and across k_t by height, (n_mode, n_height, 2, n)."""
+    """``int f e^(+j k_t . rho)`` along k_t, across it, and vertical, by height, (n_mode, n_height, 3, n)."""
     heights, index = point_heights(cloud)
     phase = np.exp(1j * (cloud.points[:, :2] @ waves.T))
-    result = np.zeros((len(waves), len(heights), 2, cloud.n), dtype=complex)
+    result = np.zeros((len(waves), len(heights), 3, cloud.n), dtype=complex)
+    cosine, sine = np.cos(angle)[:, None], np.sin(angle)[:, None]
     for h in range(len(heights)):
         pick = np.flatnonzero(index == h)
         x, y = ((cloud.current[c][pick].T @ phase[pick]).T for c in (0, 1))
-        cosine, sine = np.cos(angle)[:, None], np.sin(angle)[:, None]
         result[:, h, 0] = cosine * x + sine * y
         result[:, h, 1] = -sine * x + cosine * y
+        if cloud.current[2].nnz:
+            result[:, h, 2] = (cloud.current[2][pick].T @ phase[pick]).T
     return result
 
 
@@ -59,7 +61,7 @@ def layered_radiation(
     give (times -2) the excitation by plane waves of these wave vectors.
     """
     heights, _ = point_heights(cloud)
-    fields = directed_transforms(cloud, waves, angle)
+    fields, upright = directed_transforms(cloud, waves, angle), cloud.current[2].nnz > 0
     if arriving:
         fields = fields.conj()
     kt = np.linalg.norm(waves, axis=1)
@@ -76,8 +78,12 @@ def layered_radiation(
             scale = np.sqrt(1 / (lattice.area * impedance))
             if side == 1:
                 scale = scale * np.exp(1j * kz[pick] * stack.top)
-            field = fields[pick, :, polarisation]
-            result[pick] = scale[:, None] * np.einsum("mh,mhn->mn", per_current, field)
+            result[pick] = np.einsum("mh,mhn->mn", per_current, fields[pick, :, polarisation])
+            if polarisation == 0 and upright:
+                # a wave arrives with E_z of the other sign against E_u than one that leaves (`incident_field`)
+                sign = -1.0 if arriving else 1.0
+                result[pick] += sign * np.einsum("mh,mhn->mn", outer.tm_vertical, fields[pick, :, 2])
+            result[pick] *= scale[:, None]
     return result
 
 
@@ -107,10 +113,9 @@ def layer_losses(
     heights, _ = point_heights(cloud)
     angle = np.arctan2(waves[:, 1], waves[:, 0])
     kt = np.linalg.norm(waves, axis=1)
-    spectral = directed_transforms(cloud, waves, angle) @ currents / lattice.area  # (n_mode, n_height, 2, m)
+    spectral = directed_transforms(cloud, waves, angle) @ currents / lattice.area  # (n_mode, n_height, 3, m)
 
-    def power(combined: Complexes) -> Floats:
-        current = np.concatenate([combined, np.zeros_like(combined[..., :1])], axis=-1)
+    def power(current: Complexes) -> Floats:
         lost = absorbed_power(stack, k, kt, heights, current)
         return lattice.area * np.concatenate([lost.layers.sum(axis=0), lost.sheets.sum(axis=0)])
 

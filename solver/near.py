@@ -13,10 +13,12 @@ from ..geometry.lattice import Lattice
 from .basis import Basis
 from .cloud import Cloud
 from .corrections import Cell, build_corrections
+from .cross import CrossNear
 from .ewald import Split, near_kernels
-from .pairs import at_height, half_cells
+from .pairs import half_cells
 from .rays import Ray
 from .threads import thread_count
+from .zones import Zoning
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -38,17 +40,31 @@ class NearBlock:
     charge: NDArray
 
 
-def build_near(basis: Basis, cloud: Cloud, lattice: Lattice, split: Split, rays: list[Ray]) -> list[NearBlock]:
-    """Fill the near part. Cells of one half-plane only; the matrix at -m is the transpose of that at m."""
+def build_near(
+    basis: Basis,
+    cloud: Cloud,
+    lattice: Lattice,
+    split: Split,
+    rays: list[Ray],
+    zoning: Zoning,
+    cross: CrossNear | None = None,
+) -> list[NearBlock]:
+    """Fill the near part. Cells of one half-plane only; the matrix at -m is the transpose of that at m.
+
+    `cross`: the terms between charges and vertical currents of a layered stack, counted with the currents'.
+    """
     extent = float(np.linalg.norm(np.ptp(cloud.points[:, :2], axis=0)))
     cells = [(int(p), int(q)) for p, q in half_cells(lattice, split.near_radius + extent)]
-    tiles = _tiles_by_height(cloud.points, rays)
+    zone = zoning.of_element[cloud.element]
+    tiles = _tiles_by_zone(cloud.points, zone)
     with ThreadPoolExecutor(thread_count()) as pool:  # the array operations inside release the interpreter lock
-        corrections = pool.submit(build_corrections, basis, lattice, rays)
+        corrections = pool.submit(build_corrections, basis, lattice, rays, zoning)
 
         def fill(cell: Cell) -> NearBlock | None:
             shift = np.append(lattice.positions(np.array([cell]))[0], 0.0)
-            current, charge = _point_sums(cloud, tiles, shift, split, rays)
+            current, charge = _point_sums(cloud, tiles, zone, shift, split, rays)
+            if cross is not None:
+                current = current + cross.sums(shift)
             missed = corrections.result().get(cell, ([], []))
             for part, matrices in ((current, missed[0]), (charge, missed[1])):
                 for p, matrix in enumerate(matrices):
@@ -85,16 +101,13 @@ def _tiles(points: Floats, index: Ints) -> list[Ints]:
     return _tiles(points, order[:half]) + _tiles(points, order[half:])
 
 
-def _tiles_by_height(points: Floats, rays: list[Ray]) -> list[Ints]:
-    """Tiles of points at one height where rays belong to heights."""
-    heights = sorted({ray.heights[0] for ray in rays if ray.heights is not None})
-    if not heights:
-        return _tiles(points, np.arange(len(points)))
-    return [tile for h in heights for tile in _tiles(points, np.flatnonzero(at_height(points, h)))]
+def _tiles_by_zone(points: Floats, zone: Ints) -> list[Ints]:
+    """Tiles of points in one zone each."""
+    return [tile for z in np.unique(zone) for tile in _tiles(points, np.flatnonzero(zone == z))]
 
 
 def _point_sums(
-    cloud: Cloud, tiles: list[Ints], shift: Floats, split: Split, rays: list[Ray]
+    cloud: Cloud, tiles: list[Ints], zone: Ints, shift: Floats, split: Split, rays: list[Ray]
 ) -> tuple[NDArray, NDArray]:
     """``B^T K_p B`` of the currents and charges with the sources displaced, each (powers, n, n).
 
@@ -116,7 +129,8 @@ def _point_sums(
             continue
         sources = np.concatenate([tiles[j] for j in near])
         own = len(tile) if symmetric else 0  # the tile with itself comes first and is halved
-        kernels = _kernels(cloud.points[tile], cloud.points[sources], shift, split, rays)
+        zones = int(zone[tile[0]]), zone[sources]
+        kernels = _kernels(cloud.points[tile], cloud.points[sources], zones, shift, split, rays)
         for kernel in {id(kernel): kernel for kernel in kernels}.values():
             kernel[:own] *= 0.5
         _add_tile(weights, tile, sources, kernels, current, charge)
@@ -132,33 +146,41 @@ def _by_power(sums: NDArray, symmetric: bool) -> NDArray:
     return result
 
 
-def _kernels(observers: Floats, sources: Floats, shift: Floats, split: Split, rays: list[Ray]) -> list[NDArray]:
+def _kernels(
+    observers: Floats, sources: Floats, zones: tuple[int, Ints], shift: Floats, split: Split, rays: list[Ray]
+) -> list[NDArray]:
     """Near kernels (n_source, powers, n_observer) for horizontal currents, vertical currents and charges.
 
     In the mirror vertical currents keep their sign where horizontal ones and charges change it. Kernels that are the
-    same are one array.
+    same are one array. `zones`: that of the observers and those of the sources.
     """
     if len(rays) == 1 and rays[0] == Ray():
         return [_kernel(observers, sources + shift, split)] * 3
-    if rays[-1].mirrored:
+    if rays[-1].pair is None:
         direct = _kernel(observers, sources + shift, split)
         image = _kernel(observers, rays[-1].place(sources, shift), split)
         added = direct + image
         direct -= image
         return [direct, added, direct]
+    mine = [ray for ray in rays if ray.pair is not None and ray.pair[0] == zones[0]]
     shape = (len(sources), split.powers, len(observers))
     kind = np.result_type(*(w for ray in rays for w in ray.powers(split.powers)))
     current, charge = np.zeros(shape, kind), np.zeros(shape, kind)
-    for ray in rays:
-        assert ray.heights is not None
-        if not at_height(observers[:1], ray.heights[0])[0]:
+    vertical = np.zeros(shape, kind) if any(ray.mirrored and ray.current for ray in mine) else current
+    for ray in mine:
+        assert ray.pair is not None
+        pick = np.flatnonzero(zones[1] == ray.pair[1])
+        if not len(pick):
             continue
-        pick = np.flatnonzero(at_height(sources, ray.heights[1]))
-        if len(pick):
-            kernel = _kernel(observers, ray.place(sources[pick], shift), split)
-            for target, weight in zip((current, charge), ray.powers(split.powers), strict=True):
-                target[pick] += weight[:, None] * kernel
-    return [current, current, charge]
+        kernel = _kernel(observers, ray.place(sources[pick], shift), split)
+        of_current, of_charge = ray.powers(split.powers)
+        if ray.current:
+            current[pick] += of_current[:, None] * kernel
+            if vertical is not current:
+                vertical[pick] += (-of_current if ray.mirrored else of_current)[:, None] * kernel
+        if ray.charge:
+            charge[pick] += of_charge[:, None] * kernel
+    return [current, vertical, charge]
 
 
 def _kernel(observers: Floats, sources: Floats, split: Split) -> Floats:

@@ -13,11 +13,14 @@ from numpy.typing import NDArray
 from ..geometry.cell import UnitCell
 from .basis import build_basis
 from .cloud import build_cloud
+from .cross import CrossNear, cross_nodes
 from .ewald import choose_split
-from .far import FarPart, choose_layers, layered_heights, tall_fraction
+from .far import FarPart, choose_layers, tall_fraction
 from .layered_far import LayeredFarPart
 from .near import build_near
+from .pairs import shortest_element
 from .rays import air_rays, layered_rays
+from .zones import divide_zones
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
@@ -45,18 +48,22 @@ class PeriodicOperator:
         self.cloud = build_cloud(self.basis)
         self.stack = stack = cell.stack if cell.stack is not None and not cell.stack.is_air else None
         index = 1.0 if stack is None else float(np.sqrt(np.abs(stack.permittivity * stack.permeability).max()))
-        self.split = choose_split(
-            self.lattice.area, k_max * index, tolerance, splitting, tall=tall_fraction(self.cloud)
-        )
-        layers = choose_layers(self.cloud, self.split, tolerance)
+        zoning = divide_zones(self.basis, stack)
+        tall = tall_fraction(self.cloud, zoning)
+        self.split = choose_split(self.lattice.area, k_max * index, tolerance, splitting, tall=tall)
+        layers = choose_layers(self.cloud, zoning, self.split, tolerance)
+        cross_near = None
         if stack is None:
             rays = air_rays(cell.ground)
             self.far = FarPart(self.cloud, self.lattice, self.split, layers, cell.ground)
         else:
-            heights = layered_heights(layers, stack)
-            rays = layered_rays(stack, heights, RAY_REACH / self.split.splitting)
-            self.far = LayeredFarPart(self.cloud, self.lattice, self.split, stack, rays, layers)
-        self.near = build_near(self.basis, self.cloud, self.lattice, self.split, rays)
+            rays, cross = layered_rays(stack, zoning, RAY_REACH / self.split.splitting)
+            self.far = LayeredFarPart(self.cloud, self.lattice, self.split, stack, rays, cross, layers)
+            if cross:
+                nodes = cross_nodes(self.split, shortest_element(self.basis))
+                zone = zoning.of_element[self.cloud.element]
+                cross_near = CrossNear(self.cloud, zone, self.split, nodes, cross)
+        self.near = build_near(self.basis, self.cloud, self.lattice, self.split, rays, zoning, cross_near)
         self._combined: tuple[float, tuple[NDArray, NDArray, NDArray, Floats]] | None = None
 
     @property

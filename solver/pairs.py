@@ -11,6 +11,7 @@ from scipy.spatial import cKDTree
 from ..geometry.lattice import Lattice
 from .basis import Basis
 from .rays import Ray
+from .zones import Zoning
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -50,21 +51,26 @@ def element_spheres(basis: Basis) -> tuple[Floats, Floats]:
     return np.concatenate(centres), np.concatenate(radii)
 
 
-def find_near_pairs(basis: Basis, lattice: Lattice, rays: list[Ray]) -> list[NearPairs]:
+def shortest_element(basis: Basis) -> float:
+    """Diameter of the smallest element, m."""
+    return 2 * float(element_spheres(basis)[1].min())
+
+
+def find_near_pairs(basis: Basis, lattice: Lattice, rays: list[Ray], zoning: Zoning) -> list[NearPairs]:
     """All pairs to be corrected, by cell and ray."""
     centres, radii = element_spheres(basis)
     reach = 2 * NEAR_RATIO * radii.max()
     if len(basis.segments):
         reach = max(reach, COAXIAL_REACH * basis.segment_radius.max() + 2 * radii.max())
     extent = np.linalg.norm(np.ptp(centres[:, :2], axis=0))
-    found = []
+    found, zone = [], zoning.of_element
     for cell in half_cells(lattice, extent + reach):
         shift = np.append(lattice.positions(cell[None])[0], 0.0)
         for ray in rays:
             moved = ray.place(centres, shift)
             first, second = _close(centres, moved, reach)
-            if ray.heights is not None:
-                keep = at_height(centres, ray.heights[0])[first] & at_height(centres, ray.heights[1])[second]
+            if ray.pair is not None:
+                keep = (zone[first] == ray.pair[0]) & (zone[second] == ray.pair[1])
                 first, second = first[keep], second[keep]
             if not cell.any():
                 keep = first <= second
@@ -80,11 +86,6 @@ def find_near_pairs(basis: Basis, lattice: Lattice, rays: list[Ray]) -> list[Nea
 def _close(points: Floats, others: Floats, reach: float) -> tuple[Ints, Ints]:
     pairs = cKDTree(points).sparse_distance_matrix(cKDTree(others), reach, output_type="coo_matrix")
     return pairs.row.astype(np.int64), pairs.col.astype(np.int64)
-
-
-def at_height(points: Floats, height: float) -> NDArray[np.bool_]:
-    """Which points lie at a height, to a millionth of their extent."""
-    return np.abs(points[:, 2] - height) < 1e-9 * max(float(np.ptp(points, axis=0).max()), abs(height))
 
 
 def _coaxial(basis: Basis, first: Ints, second: Ints, shift: Floats, ray: Ray) -> NDArray[np.bool_]:
