@@ -5,8 +5,8 @@ For every pair of levels
     D_A = (K_A - sum over rays of a_n W(kappa_n, d_n)) / S,   D_Q and D_v (vertical currents) likewise,
     W(kappa, d) = near share of exp(-g d)/(2 g),   g = j sqrt(kappa k^2 - k_t^2)        (`shares`)
 
-(design: the central equation for any layered stack; the kernels: `layered_kernel`; K_c: `cross`). W is the spectrum of
-what Ewald's near kernels hold, so the sum of both parts does not depend on the rays chosen nor on the splitting
+(design: the central equation for any layered stack; the kernels: `layered_kernel`; K_c: `columns`). W is the spectrum
+of what Ewald's near kernels hold, so the sum of both parts does not depend on the rays chosen nor on the splitting
 parameter.
 """
 

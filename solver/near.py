@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+from collections import defaultdict
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,11 +14,12 @@ from scipy import sparse
 from ..geometry.lattice import Lattice
 from .basis import Basis
 from .cloud import Cloud
+from .columns import ColumnSums
 from .corrections import Cell, build_corrections
-from .cross import CrossNear
 from .ewald import Split, near_kernels
 from .pairs import half_cells
-from .rays import Ray
+from .radial import RadialTable
+from .rays import CrossRay, Ray
 from .threads import thread_count
 from .zones import Zoning
 
@@ -47,24 +50,28 @@ def build_near(
     split: Split,
     rays: list[Ray],
     zoning: Zoning,
-    cross: CrossNear | None = None,
+    cross: list[CrossRay] | None = None,
 ) -> list[NearBlock]:
     """Fill the near part. Cells of one half-plane only; the matrix at -m is the transpose of that at m.
 
-    `cross`: the terms between charges and vertical currents of a layered stack, counted with the currents'.
+    `cross`: rays between charges and vertical currents of a layered stack, counted with the currents'.
     """
     extent = float(np.linalg.norm(np.ptp(cloud.points[:, :2], axis=0)))
     cells = [(int(p), int(q)) for p, q in half_cells(lattice, split.near_radius + extent)]
     zone = zoning.of_element[cloud.element]
     tiles = _tiles_by_zone(cloud.points, zone)
+    upright = cross is not None and not all(z.is_level for z in zoning.zones)
+    by_columns = ColumnSums(cloud, zoning, split, rays, cross or []) if upright else None
+    kind = np.result_type(*(w for ray in rays for w in ray.powers(split.powers)))
+    by_points = _PointKernels(zoning, split, rays if by_columns is None else by_columns.left, kind)
     with ThreadPoolExecutor(thread_count()) as pool:  # the array operations inside release the interpreter lock
         corrections = pool.submit(build_corrections, basis, lattice, rays, zoning)
 
         def fill(cell: Cell) -> NearBlock | None:
             shift = np.append(lattice.positions(np.array([cell]))[0], 0.0)
-            current, charge = _point_sums(cloud, tiles, zone, shift, split, rays)
-            if cross is not None:
-                current = current + cross.sums(shift)
+            current, charge = _point_sums(cloud, tiles, zone, shift, split, by_points)
+            if by_columns is not None:
+                by_columns.add_to(current, charge, shift)
             missed = corrections.result().get(cell, ([], []))
             for part, matrices in ((current, missed[0]), (charge, missed[1])):
                 for p, matrix in enumerate(matrices):
@@ -107,7 +114,7 @@ def _tiles_by_zone(points: Floats, zone: Ints) -> list[Ints]:
 
 
 def _point_sums(
-    cloud: Cloud, tiles: list[Ints], zone: Ints, shift: Floats, split: Split, rays: list[Ray]
+    cloud: Cloud, tiles: list[Ints], zone: Ints, shift: Floats, split: Split, kernels_of: _PointKernels
 ) -> tuple[NDArray, NDArray]:
     """``B^T K_p B`` of the currents and charges with the sources displaced, each (powers, n, n).
 
@@ -116,13 +123,12 @@ def _point_sums(
     n = cloud.n
     symmetric = not shift.any()
     # (observing function, power, source function) while summing: adding a tile then touches whole rows
-    kind = np.result_type(*(w for ray in rays for w in ray.powers(split.powers)))
-    current, charge = np.zeros((n, split.powers, n), kind), np.zeros((n, split.powers, n), kind)
+    current, charge = (np.zeros((n, split.powers, n), kernels_of.kind) for _ in range(2))
     weights = [sparse.csr_matrix(m.T) for m in (*cloud.current, cloud.charge)]
     boxes = np.array([[cloud.points[t].min(axis=0), cloud.points[t].max(axis=0)] for t in tiles])
     for i, tile in enumerate(tiles):
         gap = np.maximum(boxes[:, 0] + shift - boxes[i, 1], boxes[i, 0] - boxes[:, 1] - shift).clip(min=0)
-        if len(rays) > 1:
+        if not kernels_of.direct_only:
             gap[:, 2] = 0.0
         near = [j for j in np.flatnonzero((gap**2).sum(axis=1) < split.near_radius**2) if j >= i or not symmetric]
         if not near:
@@ -130,7 +136,7 @@ def _point_sums(
         sources = np.concatenate([tiles[j] for j in near])
         own = len(tile) if symmetric else 0  # the tile with itself comes first and is halved
         zones = int(zone[tile[0]]), zone[sources]
-        kernels = _kernels(cloud.points[tile], cloud.points[sources], zones, shift, split, rays)
+        kernels = kernels_of(cloud.points[tile], cloud.points[sources], zones, shift)
         for kernel in {id(kernel): kernel for kernel in kernels}.values():
             kernel[:own] *= 0.5
         _add_tile(weights, tile, sources, kernels, current, charge)
@@ -146,41 +152,70 @@ def _by_power(sums: NDArray, symmetric: bool) -> NDArray:
     return result
 
 
-def _kernels(
-    observers: Floats, sources: Floats, zones: tuple[int, Ints], shift: Floats, split: Split, rays: list[Ray]
-) -> list[NDArray]:
+class _PointKernels:
     """Near kernels (n_source, powers, n_observer) for horizontal currents, vertical currents and charges.
 
     In the mirror vertical currents keep their sign where horizontal ones and charges change it. Kernels that are the
-    same are one array. `zones`: that of the observers and those of the sources.
+    same are one array. Between two levels of a stack all rays but a direct one at the same height are in a table.
     """
-    if len(rays) == 1 and rays[0] == Ray():
-        return [_kernel(observers, sources + shift, split)] * 3
-    if rays[-1].pair is None:
-        direct = _kernel(observers, sources + shift, split)
-        image = _kernel(observers, rays[-1].place(sources, shift), split)
-        added = direct + image
-        direct -= image
-        return [direct, added, direct]
-    mine = [ray for ray in rays if ray.pair is not None and ray.pair[0] == zones[0]]
-    shape = (len(sources), split.powers, len(observers))
-    kind = np.result_type(*(w for ray in rays for w in ray.powers(split.powers)))
-    current, charge = np.zeros(shape, kind), np.zeros(shape, kind)
-    vertical = np.zeros(shape, kind) if any(ray.mirrored and ray.current for ray in mine) else current
-    for ray in mine:
-        assert ray.pair is not None
-        pick = np.flatnonzero(zones[1] == ray.pair[1])
-        if not len(pick):
-            continue
-        kernel = _kernel(observers, ray.place(sources[pick], shift), split)
-        of_current, of_charge = ray.powers(split.powers)
+
+    def __init__(self, zoning: Zoning, split: Split, rays: list[Ray], kind: np.dtype):
+        self.split, self.rays, self.kind = split, rays, kind
+        self.direct_only = rays == [Ray()]
+        self.tables: dict[tuple[int, int], RadialTable] = {}
+        self.single: dict[tuple[int, int], list[Ray]] = defaultdict(list)
+        tabulated: dict[tuple[int, int], list[tuple[Ray, float]]] = defaultdict(list)
+        for ray in rays:
+            if ray.pair is None:
+                continue
+            observer, source = (zoning.zones[i] for i in ray.pair)
+            distance = abs(float(ray.height(np.array(source.low))) - observer.low)
+            if observer.is_level and source.is_level and distance > 0:
+                tabulated[ray.pair].append((ray, distance))
+            else:
+                self.single[ray.pair].append(ray)
+        for pair, found in tabulated.items():
+            self.tables[pair] = RadialTable([ray for ray, _ in found], np.array([d for _, d in found]), split)
+
+    def __call__(self, observers: Floats, sources: Floats, zones: tuple[int, Ints], shift: Floats) -> list[NDArray]:
+        """`zones`: that of the observers and those of the sources."""
+        if self.direct_only:
+            return [_kernel(observers, sources + shift, self.split)] * 3
+        if self.rays and self.rays[-1].pair is None:
+            direct = _kernel(observers, sources + shift, self.split)
+            image = _kernel(observers, self.rays[-1].place(sources, shift), self.split)
+            added = direct + image
+            direct -= image
+            return [direct, added, direct]
+        shape = (len(sources), self.split.powers, len(observers))
+        current, charge = np.zeros(shape, self.kind), np.zeros(shape, self.kind)
+        upright = any(
+            r.mirrored and r.current for pair, rays in self.single.items() if pair[0] == zones[0] for r in rays
+        )
+        vertical = np.zeros(shape, self.kind) if upright else current
+        ends = np.flatnonzero(np.diff(zones[1])) + 1  # the tiles are in the order of their zones
+        for low, high in pairwise([0, *ends.tolist(), len(sources)]):
+            pair, mine = (zones[0], int(zones[1][low])), slice(low, high)
+            targets = tuple(kernel[mine] for kernel in (current, vertical, charge))
+            for ray in self.single[pair]:
+                self._add(ray, observers, ray.place(sources[mine], shift), targets)
+            if pair in self.tables:
+                square = np.zeros((high - low, len(observers)))
+                for axis in (0, 1):
+                    square += (sources[mine, axis, None] + shift[axis] - observers[:, axis]) ** 2
+                self.tables[pair].add(square, targets[0], targets[2])
+        return [current, vertical, charge]
+
+    def _add(self, ray: Ray, observers: Floats, sources: Floats, targets: tuple[NDArray, ...]) -> None:
+        current, vertical, charge = targets
+        kernel = _kernel(observers, sources, self.split)
+        of_current, of_charge = ray.powers(self.split.powers)
         if ray.current:
-            current[pick] += of_current[:, None] * kernel
-            if vertical is not current:
-                vertical[pick] += (-of_current if ray.mirrored else of_current)[:, None] * kernel
+            current += of_current[:, None] * kernel
+            if vertical.base is not current.base:
+                vertical += (-of_current if ray.mirrored else of_current)[:, None] * kernel
         if ray.charge:
-            charge[pick] += of_charge[:, None] * kernel
-    return [current, vertical, charge]
+            charge += of_charge[:, None] * kernel
 
 
 def _kernel(observers: Floats, sources: Floats, split: Split) -> Floats:
@@ -209,10 +244,11 @@ def _add_tile(
         rows, columns = (np.flatnonzero(np.diff(m.indptr)) for m in (left, right))
         if not len(rows) or not len(columns):
             continue
-        kernel = kernels[(0, 0, 1, 2)[component]]
-        inner = (right[columns] @ kernel.reshape(len(sources), -1)).reshape(len(columns), powers, len(tile))
+        kernel = kernels[(0, 0, 1, 2)[component]].reshape(len(sources), -1)
+        kind = kernel.dtype  # the weights are real: complex numbers go through as pairs
+        inner = (right[columns] @ kernel.view(float)).view(kind).reshape(len(columns), powers, len(tile))
         inner = np.ascontiguousarray(inner.transpose(2, 1, 0)).reshape(len(tile), -1)
-        outer = (left[rows] @ inner).reshape(len(rows), powers, len(columns))
+        outer = (left[rows] @ inner.view(float)).view(kind).reshape(len(rows), powers, len(columns))
         target = charge if component == 3 else current
         if len(columns) == target.shape[2]:
             target[rows] += outer

@@ -13,12 +13,10 @@ from numpy.typing import NDArray
 from ..geometry.cell import UnitCell
 from .basis import build_basis
 from .cloud import build_cloud
-from .cross import CrossNear, cross_nodes
 from .ewald import choose_split
 from .far import FarPart, choose_layers, tall_fraction
 from .layered_far import LayeredFarPart
 from .near import build_near
-from .pairs import shortest_element
 from .rays import air_rays, layered_rays
 from .zones import divide_zones
 
@@ -52,18 +50,14 @@ class PeriodicOperator:
         tall = tall_fraction(self.cloud, zoning)
         self.split = choose_split(self.lattice.area, k_max * index, tolerance, splitting, tall=tall)
         layers = choose_layers(self.cloud, zoning, self.split, tolerance)
-        cross_near = None
+        cross = None
         if stack is None:
             rays = air_rays(cell.ground)
             self.far = FarPart(self.cloud, self.lattice, self.split, layers, cell.ground)
         else:
             rays, cross = layered_rays(stack, zoning, RAY_REACH / self.split.splitting)
             self.far = LayeredFarPart(self.cloud, self.lattice, self.split, stack, rays, cross, layers)
-            if cross:
-                nodes = cross_nodes(self.split, shortest_element(self.basis))
-                zone = zoning.of_element[self.cloud.element]
-                cross_near = CrossNear(self.cloud, zone, self.split, nodes, cross)
-        self.near = build_near(self.basis, self.cloud, self.lattice, self.split, rays, zoning, cross_near)
+        self.near = build_near(self.basis, self.cloud, self.lattice, self.split, rays, zoning, cross)
         self._combined: tuple[float, tuple[NDArray, NDArray, NDArray, Floats]] | None = None
 
     @property

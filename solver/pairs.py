@@ -51,11 +51,6 @@ def element_spheres(basis: Basis) -> tuple[Floats, Floats]:
     return np.concatenate(centres), np.concatenate(radii)
 
 
-def shortest_element(basis: Basis) -> float:
-    """Diameter of the smallest element, m."""
-    return 2 * float(element_spheres(basis)[1].min())
-
-
 def find_near_pairs(basis: Basis, lattice: Lattice, rays: list[Ray], zoning: Zoning) -> list[NearPairs]:
     """All pairs to be corrected, by cell and ray."""
     centres, radii = element_spheres(basis)
@@ -63,19 +58,20 @@ def find_near_pairs(basis: Basis, lattice: Lattice, rays: list[Ray], zoning: Zon
     if len(basis.segments):
         reach = max(reach, COAXIAL_REACH * basis.segment_radius.max() + 2 * radii.max())
     extent = np.linalg.norm(np.ptp(centres[:, :2], axis=0))
-    found, zone = [], zoning.of_element
+    found, everything = [], np.arange(len(centres))
+    members = [np.flatnonzero(zoning.of_element == i) for i in range(len(zoning.zones))]
     for cell in half_cells(lattice, extent + reach):
         shift = np.append(lattice.positions(cell[None])[0], 0.0)
         for ray in rays:
-            moved = ray.place(centres, shift)
-            first, second = _close(centres, moved, reach)
-            if ray.pair is not None:
-                keep = (zone[first] == ray.pair[0]) & (zone[second] == ray.pair[1])
-                first, second = first[keep], second[keep]
+            observers, sources = (everything, everything) if ray.pair is None else (members[i] for i in ray.pair)
+            first, second = _close(centres[observers], ray.place(centres[sources], shift), reach)
+            first, second = observers[first], sources[second]
             if not cell.any():
                 keep = first <= second
                 first, second = first[keep], second[keep]
-            distance = np.linalg.norm(centres[first] - moved[second], axis=1)
+            if not len(first):
+                continue
+            distance = np.linalg.norm(centres[first] - ray.place(centres[second], shift), axis=1)
             near = distance <= NEAR_RATIO * (radii[first] + radii[second])
             near |= _coaxial(basis, first, second, shift, ray)
             if near.any():
@@ -84,6 +80,9 @@ def find_near_pairs(basis: Basis, lattice: Lattice, rays: list[Ray], zoning: Zon
 
 
 def _close(points: Floats, others: Floats, reach: float) -> tuple[Ints, Ints]:
+    """Indices of all pairs closer than `reach`."""
+    if others[:, 2].min() - points[:, 2].max() > reach or points[:, 2].min() - others[:, 2].max() > reach:
+        return np.zeros(0, np.int64), np.zeros(0, np.int64)
     pairs = cKDTree(points).sparse_distance_matrix(cKDTree(others), reach, output_type="coo_matrix")
     return pairs.row.astype(np.int64), pairs.col.astype(np.int64)
 

@@ -63,7 +63,7 @@ class Ray:
 
 @dataclass(frozen=True)
 class CrossRay:
-    """A ray of the kernel K_c between the charges of one zone and the vertical currents of another (`cross`)."""
+    """A ray of the kernel K_c between the charges of one zone and the vertical currents of another (`columns`)."""
 
     mirrored: bool
     lift: float

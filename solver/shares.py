@@ -1,7 +1,7 @@
 """What the near part's rays amount to in the plane of k_t, all rays of a pair of layers at once.
 
 A ray of Ewald's kernel holds ``1/(2 sqrt(pi)) int (dt / t^2) exp(-d^2 t^2 - (k_t^2 - kappa k^2) / 4 t^2)`` over t from
-the splitting parameter E upwards, one of the kernel K_c (`cross`) ``1/4 int (dt / t^3) erfc(t d) exp(...)``. On fixed
+the splitting parameter E upwards, one of the kernel K_c (`columns`) ``1/4 int (dt / t^3) erfc(t d) exp(...)``. On fixed
 nodes t both are a factor of k_t alone times a factor of heights and kappa alone, which can be summed over rays: one
 matrix product serves every Floquet wave, pair of levels and ray.
 """

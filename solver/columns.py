@@ -1,0 +1,196 @@
+"""Near part of vertical conductors in a stack: points above each other handled together, all rays at once.
+
+Ewald's near kernel is an integral over t, from the splitting parameter upwards, of ``exp(-rho^2 t^2)`` times what
+depends on the heights alone. So is the kernel K_c between charges and vertical currents: a ray of it has the spectrum
+``a exp(-g D) / (2 g^2)``, ``g^2 = k_t^2 - kappa k^2``, which is the integral of ``exp(-g s) / (2 g)`` over s from D
+upwards, a line of images from the image of the source to infinity, and
+
+    (a / 4 pi) int (dt / t) erfc(t D) exp(-rho^2 t^2 + kappa k^2 / 4 t^2)            in space
+
+(derived anew from P. P. Ewald, Ann. Phys. 369, 253, 1921; the plane of k_t: `shares`). On fixed nodes t the factor of
+heights is summed over rays once; for a column of points the rest is one small matrix product. K_c is as mild as a
+logarithm, and the cloud's own quadrature is enough for it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from math import factorial
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import sparse
+from scipy.spatial import cKDTree
+from scipy.special import erfc
+
+from . import quadrature
+from .cloud import Cloud
+from .ewald import Split
+from .rays import CrossRay, Ray, real_if_real
+from .zones import Zoning
+
+Floats = NDArray[np.float64]
+Ints = NDArray[np.int64]
+
+NODES = 10  # Gauss nodes for every factor e^2 of t: 1e-9 of the kernel (tested)
+BEYOND = 14.0  # t ends at this over the least distance in the cloud; images may be somewhat nearer
+FEWEST = 2.0  # points to a column, in the mean, from which columns pay
+
+
+@dataclass(frozen=True)
+class _Group:
+    """Observers at one height and a column of sources; factors of heights (powers, n_source, n_node) or None."""
+
+    observers: Ints
+    sources: Ints
+    kernels: dict[str, NDArray]
+    both_ways: bool
+
+
+class ColumnSums:
+    """Near sums of all pairs of zones with an extent in z, for one cloud.
+
+    `left` : the rays that are not covered: those between levels, the direct ones within a zone (which have a
+    singularity at the point itself), and those of zones whose points do not stand above each other. K_c is covered
+    for all pairs.
+    """
+
+    def __init__(self, cloud: Cloud, zoning: Zoning, split: Split, rays: Sequence[Ray], cross: Sequence[CrossRay]):
+        self.cloud, self.split = cloud, split
+        self.zone = zoning.of_element[cloud.element]
+        self.charge = sparse.csr_matrix(cloud.charge.T)
+        self.current = [sparse.csr_matrix(m.T) for m in cloud.current]
+        grain = 1e-9 * max(float(np.ptp(cloud.points, axis=0).max()), 1e-30)
+        self.t, self.weights = _nodes(split.splitting, _least_distance(cloud.points, 1e3 * grain))
+        numbers = [x for ray in rays for x in (ray.current, ray.charge, ray.kappa_current, ray.kappa_charge)]
+        numbers += [x for ray in cross for x in (ray.amplitude, ray.kappa)]
+        self.kind = np.result_type(real_if_real(np.array(numbers)))
+        tall = [i for i, zone in enumerate(zoning.zones) if not zone.is_level]
+        columns = {i: _groups(np.round(cloud.points[self.zone == i, :2] / grain)) for i in tall}
+        self.columns = {i: [np.flatnonzero(self.zone == i)[c] for c in columns[i]] for i in tall}
+        heights = [_groups(np.round(cloud.points[self.zone == i, 2:] / grain)) for i in range(len(zoning.zones))]
+        self.levels = [[np.flatnonzero(self.zone == i)[c] for c in group] for i, group in enumerate(heights)]
+        worth = {i: len(np.flatnonzero(self.zone == i)) >= FEWEST * len(self.columns[i]) for i in tall}
+        ordered = [(o, s) for s in tall for o in range(len(zoning.zones)) if worth[s] and (o not in worth or o <= s)]
+        ordered = [(o, s) for o, s in ordered if worth.get(o, True)]
+        covered = frozenset(ordered) | frozenset((s, o) for o, s in ordered)
+        self.left = [ray for ray in rays if ray.pair not in covered or _is_direct(ray)]
+        self.groups: list[_Group] = []
+        for pair in ordered:
+            self._gather(pair, [ray for ray in rays if ray.pair == pair and not _is_direct(ray)], None)
+        for pair in dict.fromkeys(ray.pair for ray in cross):
+            self._gather(pair, None, [ray for ray in cross if ray.pair == pair])
+
+    def _gather(self, pair: tuple[int, int], rays: list[Ray] | None, cross: list[CrossRay] | None) -> None:
+        z = self.cloud.points[:, 2]
+        for observers in self.levels[pair[0]]:
+            for sources in self.columns[pair[1]]:
+                here, there = float(z[observers[0]]), z[sources]
+                if rays is not None:
+                    kernels = self._profiles(here, there, rays)
+                    self.groups.append(_Group(observers, sources, kernels, pair[0] != pair[1]))
+                elif cross:
+                    self.groups.append(_Group(observers, sources, {"c": self._crossed(here, there, cross)}, True))
+
+    def _profiles(self, z: float, sources: Floats, rays: Sequence[Ray]) -> dict[str, NDArray]:
+        """Height factors of horizontal currents, vertical currents (mirrored: the other sign) and charges."""
+        shape, scale = (self.split.powers, len(sources), len(self.t)), 1 / (2 * np.pi**1.5)
+        a, v, q = (np.zeros(shape, self.kind) for _ in range(3))
+        p = np.arange(self.split.powers)
+        fall = (
+            np.array([1 / (4.0**i * factorial(i)) for i in p])[:, None] * self.t ** (-2.0 * p[:, None]) * self.weights
+        )
+        for ray in rays:
+            bell = np.exp(-np.multiply.outer((z - ray.height(sources)) ** 2, self.t**2)) * scale
+            of_current, of_charge = ray.powers(self.split.powers)
+            if ray.current:
+                part = (of_current[:, None] * fall)[:, None, :] * bell
+                a += part
+                v += -part if ray.mirrored else part
+            if ray.charge:
+                q += (of_charge[:, None] * fall)[:, None, :] * bell
+        return {"a": a, "v": v, "q": q}
+
+    def _crossed(self, z: float, sources: Floats, rays: Sequence[CrossRay]) -> NDArray:
+        """Height factors of K_c."""
+        total = np.zeros((self.split.powers, len(sources), len(self.t)), self.kind)
+        p = np.arange(self.split.powers)
+        fall = np.array([1 / factorial(i) for i in p])[:, None] * (4 * self.t**2) ** (-1.0 * p[:, None])
+        for ray in rays:
+            bell = erfc(np.multiply.outer(np.abs(z - ray.height(sources)), self.t)) * (
+                self.weights / (4 * np.pi * self.t)
+            )
+            weight = real_if_real(ray.amplitude * ray.kappa**p)
+            total += (weight[:, None] * fall)[:, None, :] * bell
+        return total
+
+    def add_to(self, current: NDArray, charge: NDArray, shift: Floats) -> None:
+        """Add to currents' (K_c with them) and charges' sums (powers, n, n), the sources displaced by shift (3,)."""
+        for group in self.groups:
+            self._add_group(group, current, charge, shift, reverse=False)
+            if group.both_ways:
+                self._add_group(group, current, charge, -shift, reverse=True)
+
+    def _add_group(self, group: _Group, current: NDArray, charge: NDArray, shift: Floats, *, reverse: bool) -> None:
+        points = self.cloud.points
+        away = points[group.observers, :2] - points[group.sources[0], :2] - shift[:2]
+        square = (away**2).sum(axis=1)
+        if square.min() > self.split.near_radius**2:
+            return
+        bells = np.exp(-np.multiply.outer(square, self.t**2))
+        for name, profile in group.kernels.items():
+            kernel = bells @ profile.transpose(0, 2, 1)  # (powers, observers, sources)
+            for left, right, target in self._parts(name, current, charge):
+                _add(target, left[:, group.observers], right[:, group.sources], kernel, reverse=reverse)
+
+    def _parts(self, name: str, current: NDArray, charge: NDArray) -> list:
+        x, y, z = self.current
+        return {
+            "a": [(x, x, current), (y, y, current)],
+            "v": [(z, z, current)],
+            "q": [(self.charge, self.charge, charge)],
+            "c": [(self.charge, z, current)],
+        }[name]
+
+
+def _is_direct(ray: Ray) -> bool:
+    """The direct ray within one zone."""
+    return ray.pair is not None and ray.pair[0] == ray.pair[1] and not ray.mirrored and ray.lift == 0
+
+
+def _add(target: NDArray, left: sparse.csr_matrix, right: sparse.csr_matrix, kernel: NDArray, *, reverse: bool) -> None:
+    """Add ``left kernel right^T``, or its transpose, for every power, on the rows and columns that are there."""
+    rows, columns = (np.flatnonzero(np.diff(m.indptr)) for m in (left, right))
+    if not len(rows) or not len(columns):
+        return
+    left, right = left[rows], right[columns]
+    for p, matrix in enumerate(kernel):
+        product = left @ (right @ matrix.T).T
+        if reverse:
+            target[p][np.ix_(columns, rows)] += product.T
+        else:
+            target[p][np.ix_(rows, columns)] += product
+
+
+def _least_distance(points: Floats, floor: float) -> float:
+    """Shortest distance between two points of the cloud, m."""
+    apart = cKDTree(points).query(points, k=2)[0][:, 1] if len(points) > 1 else np.array([floor])
+    return max(float(apart.min()), floor)
+
+
+def _nodes(splitting: float, least: float) -> tuple[Floats, Floats]:
+    """Nodes t and weights dt of an integral over t from E to where nothing is left."""
+    low, high = np.log(splitting), np.log(max(BEYOND / least, 20 * splitting))
+    x, w = quadrature.gauss(NODES)
+    edges = np.linspace(low, high, int(np.ceil((high - low) / 2)) + 1)
+    width = np.diff(edges)[:, None]
+    t = np.exp(edges[:-1, None] + width * x).ravel()
+    return t, (width * w).ravel() * t
+
+
+def _groups(keys: Floats) -> list[Ints]:
+    """Indices of equal rows of (n, m)."""
+    _, inverse = np.unique(keys, axis=0, return_inverse=True)
+    order = np.argsort(inverse.ravel(), kind="stable")
+    return np.split(order, np.flatnonzero(np.diff(inverse.ravel()[order])) + 1) if len(order) else []
