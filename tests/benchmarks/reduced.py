@@ -76,7 +76,7 @@ def measure(unknowns: int) -> None:
         total = built - start + seconds
         direct_total = filled - start + count * one
         print(
-            f"  {count:6d} points: {total:5.1f} s in all, {direct_total / total:5.0f} times faster than point by point; "
+            f"  {count:6d} points: {total:5.1f} s, {direct_total / total:5.0f} times faster than point by point; "
             f"a further point {1e3 * seconds / count:.3f} ms, {one * count / seconds:.0f} times cheaper",
             flush=True,
         )
