@@ -35,16 +35,28 @@ Ints = NDArray[np.int64]
 
 NODES = 10  # Gauss nodes for every factor e^2 of t: 1e-9 of the kernel (tested)
 BEYOND = 14.0  # t ends at this over the least distance in the cloud; images may be somewhat nearer
-FEWEST = 2.0  # points to a column, in the mean, from which columns pay
+GROUP_COST = 2000  # handling a group costs what so many pairs of points cost, each with one ray
+
+
+@dataclass(frozen=True)
+class _Product:
+    """``left kernel right^T`` on some rows and columns of the currents' or charges' sums."""
+
+    rows: Ints
+    columns: Ints
+    left: sparse.csr_matrix
+    right: sparse.csr_matrix
+    profile: NDArray  # factors of heights (powers, n_source, n_node)
+    of_charges: bool
 
 
 @dataclass(frozen=True)
 class _Group:
-    """Observers at one height and a column of sources; factors of heights (powers, n_source, n_node) or None."""
+    """Observers at one height and a column of sources."""
 
     observers: Ints
     sources: Ints
-    kernels: dict[str, NDArray]
+    products: list[_Product]
     both_ways: bool
 
 
@@ -71,27 +83,46 @@ class ColumnSums:
         self.columns = {i: [np.flatnonzero(self.zone == i)[c] for c in columns[i]] for i in tall}
         heights = [_groups(np.round(cloud.points[self.zone == i, 2:] / grain)) for i in range(len(zoning.zones))]
         self.levels = [[np.flatnonzero(self.zone == i)[c] for c in group] for i, group in enumerate(heights)]
-        worth = {i: len(np.flatnonzero(self.zone == i)) >= FEWEST * len(self.columns[i]) for i in tall}
-        ordered = [(o, s) for s in tall for o in range(len(zoning.zones)) if worth[s] and (o not in worth or o <= s)]
-        ordered = [(o, s) for o, s in ordered if worth.get(o, True)]
-        covered = frozenset(ordered) | frozenset((s, o) for o, s in ordered)
-        self.left = [ray for ray in rays if ray.pair not in covered or _is_direct(ray)]
+        once = [(o, s) for s in tall for o in range(len(zoning.zones)) if o not in tall or o <= s]
+        covered = [pair for pair in once if self._pays(pair, rays)]
+        both = {*covered, *((s, o) for o, s in covered)}
+        self.left = [ray for ray in rays if ray.pair not in both or _is_direct(ray)]
         self.groups: list[_Group] = []
-        for pair in ordered:
+        for pair in covered:
             self._gather(pair, [ray for ray in rays if ray.pair == pair and not _is_direct(ray)], None)
         for pair in dict.fromkeys(ray.pair for ray in cross):
             self._gather(pair, None, [ray for ray in cross if ray.pair == pair])
+
+    def _pays(self, pair: tuple[int, int], rays: Sequence[Ray]) -> bool:
+        """Whether groups cost less than every ray of a pair of zones between single points."""
+        points = [int((self.zone == i).sum()) for i in pair]
+        groups = len(self.levels[pair[0]]) * len(self.columns[pair[1]])
+        return GROUP_COST * groups < sum(ray.pair == pair for ray in rays) * points[0] * points[1]
 
     def _gather(self, pair: tuple[int, int], rays: list[Ray] | None, cross: list[CrossRay] | None) -> None:
         z = self.cloud.points[:, 2]
         for observers in self.levels[pair[0]]:
             for sources in self.columns[pair[1]]:
                 here, there = float(z[observers[0]]), z[sources]
-                if rays is not None:
-                    kernels = self._profiles(here, there, rays)
-                    self.groups.append(_Group(observers, sources, kernels, pair[0] != pair[1]))
-                elif cross:
-                    self.groups.append(_Group(observers, sources, {"c": self._crossed(here, there, cross)}, True))
+                kernels = self._profiles(here, there, rays) if rays else {"c": self._crossed(here, there, cross or [])}
+                products = [
+                    product
+                    for name, profile in kernels.items()
+                    for product in self._products(name, observers, sources, profile)
+                ]
+                if products:
+                    self.groups.append(_Group(observers, sources, products, rays is None or pair[0] != pair[1]))
+
+    def _products(self, name: str, observers: Ints, sources: Ints, profile: NDArray) -> list[_Product]:
+        x, y, z = self.current
+        parts = {"a": [(x, x), (y, y)], "v": [(z, z)], "q": [(self.charge, self.charge)], "c": [(self.charge, z)]}
+        found = []
+        for one, other in parts[name]:
+            left, right = one[:, observers], other[:, sources]
+            rows, columns = (np.flatnonzero(np.diff(m.indptr)) for m in (left, right))
+            if len(rows) and len(columns) and profile.any():
+                found.append(_Product(rows, columns, left[rows], right[columns], profile, name == "q"))
+        return found
 
     def _profiles(self, z: float, sources: Floats, rays: Sequence[Ray]) -> dict[str, NDArray]:
         """Height factors of horizontal currents, vertical currents (mirrored: the other sign) and charges."""
@@ -139,38 +170,21 @@ class ColumnSums:
         if square.min() > self.split.near_radius**2:
             return
         bells = np.exp(-np.multiply.outer(square, self.t**2))
-        for name, profile in group.kernels.items():
-            kernel = bells @ profile.transpose(0, 2, 1)  # (powers, observers, sources)
-            for left, right, target in self._parts(name, current, charge):
-                _add(target, left[:, group.observers], right[:, group.sources], kernel, reverse=reverse)
-
-    def _parts(self, name: str, current: NDArray, charge: NDArray) -> list:
-        x, y, z = self.current
-        return {
-            "a": [(x, x, current), (y, y, current)],
-            "v": [(z, z, current)],
-            "q": [(self.charge, self.charge, charge)],
-            "c": [(self.charge, z, current)],
-        }[name]
+        for part in group.products:
+            powers, n_source, n_node = part.profile.shape
+            weighed = (part.right @ part.profile.transpose(1, 0, 2).reshape(n_source, -1)).reshape(-1, n_node)
+            product = part.left @ (bells @ weighed.T)  # (rows, columns x powers)
+            product = product.reshape(len(part.rows), len(part.columns), powers).transpose(2, 0, 1)
+            target = charge if part.of_charges else current
+            if reverse:
+                target[np.ix_(np.arange(powers), part.columns, part.rows)] += product.transpose(0, 2, 1)
+            else:
+                target[np.ix_(np.arange(powers), part.rows, part.columns)] += product
 
 
 def _is_direct(ray: Ray) -> bool:
     """The direct ray within one zone."""
     return ray.pair is not None and ray.pair[0] == ray.pair[1] and not ray.mirrored and ray.lift == 0
-
-
-def _add(target: NDArray, left: sparse.csr_matrix, right: sparse.csr_matrix, kernel: NDArray, *, reverse: bool) -> None:
-    """Add ``left kernel right^T``, or its transpose, for every power, on the rows and columns that are there."""
-    rows, columns = (np.flatnonzero(np.diff(m.indptr)) for m in (left, right))
-    if not len(rows) or not len(columns):
-        return
-    left, right = left[rows], right[columns]
-    for p, matrix in enumerate(kernel):
-        product = left @ (right @ matrix.T).T
-        if reverse:
-            target[p][np.ix_(columns, rows)] += product.T
-        else:
-            target[p][np.ix_(rows, columns)] += product
 
 
 def _least_distance(points: Floats, floor: float) -> float:
