@@ -10,8 +10,10 @@ from ..solver.pattern import LIGHT_SPEED
 from .cost import estimate_cost
 from .job import Job
 from .judge import AT_LEAST, TITLES, UNITS, degrees, number
+from .layers import layer_rows
 from .progress import duration
 from .report import material_text
+from .surface_waves import planes_of, wave_header, wave_rows
 
 Rows = list[tuple[str, ...]]
 
@@ -19,8 +21,12 @@ Rows = list[tuple[str, ...]]
 def show_check(job: Job, console: Any) -> None:
     """Print the case: lattice and grating lobes, cell, ports, scan, limits, expected cost."""
     console.print(f"[bold]{_safe(job.title)}[/bold]")
+    stack = job.cell.stack
+    layers = [] if stack is None else layer_rows(stack)
     for title, header, rows in (
         ("Lattice", ("", ""), lattice_rows(job)),
+        ("Stack, top to bottom", ("", "height", "material", "loss"), layers),
+        ("Surface waves of the bare stack", wave_header(job), wave_rows(job)),
         (
             "Grating lobes at the top frequency",
             ("cut phi", "free up to theta", "first order"),
@@ -32,7 +38,8 @@ def show_check(job: Job, console: Any) -> None:
         ("Limits", ("quantity", "limit", "within"), limit_rows(job)),
         ("Expected cost of a run", ("", ""), cost_rows(job)),
     ):
-        _table(console, title, header, rows)
+        if rows:
+            _table(console, title, header, rows)
 
 
 def lattice_rows(job: Job) -> Rows:
@@ -54,7 +61,7 @@ def lobe_rows(job: Job) -> Rows:
     """Onset of the first grating lobe in every cut (both half-planes) and over all azimuths."""
     lattice, k = job.cell.lattice, 2 * np.pi * job.frequency[-1] / LIGHT_SPEED
     rows: Rows = []
-    for phi in [phi for phi, _ in job.scan.planes] or list(np.radians([0.0, 45.0, 90.0])):
+    for phi in planes_of(job):
         onset, order = min((lattice.grating_lobe_onset(k, phi + side) for side in (0.0, np.pi)), key=lambda x: x[0])
         rows.append((degrees(phi), degrees(onset), "none enters" if order is None else f"({order[0]}, {order[1]})"))
     free = lattice.grating_lobe_free_cone(k)

@@ -24,6 +24,13 @@ from .plot import (
     render,
     style,
 )
+from .surface_waves import near_orders, surface_waves
+
+LAYER = "#c9b26b"  # interfaces between layers
+SURFACE_WORDS = (
+    " On the dashed circles a Floquet wave runs along a surface wave of the bare stack (named): candidates for scan "
+    "blindness."
+)
 
 
 def lattice_diagram(job: Job) -> Drawing:
@@ -40,7 +47,8 @@ def lattice_diagram(job: Job) -> Drawing:
         "image/svg+xml",
         f"Left: element positions. Right: grating-lobe diagram at {gigahertz(job.frequency[-1])}, the top of "
         "the band. The beam is at (u, v) inside the scan cone (blue); a lobe of order (p, q) is visible "
-        "while the beam lies inside the circle of that order (red where the scan cone reaches into it).",
+        "while the beam lies inside the circle of that order (red where the scan cone reaches into it)."
+        + (SURFACE_WORDS if surface_waves(job) else ""),
         "Element positions beside a diagram of the unit circle, scan cone and grating-lobe circles.",
     )
 
@@ -57,7 +65,8 @@ def cell_drawing(cell: UnitCell) -> Drawing:
         "cell",
         data,
         "image/png",
-        "The unit cell: mesh, ports (red), loads (black diamonds); from above with its neighbours in pale.",
+        "The unit cell: mesh, ports (red), loads (black diamonds); from above with its neighbours in pale."
+        + ("" if cell.stack is None else " Pale faces: the upper faces of the layers."),
         f"Unit cell with conductors {', '.join(cell.mesh.names)}, {len(cell.ports)} port(s), in two views.",
     )
 
@@ -132,11 +141,31 @@ def _lobes(axis: Any, job: Job) -> None:
                 xytext=(3, 3),
                 textcoords="offset points",
             )
+    _surface_circles(axis, job, k, reach, rim)
     free = lattice.grating_lobe_free_cone(k)
     axis.set(xlim=(-reach, reach), ylim=(-reach, reach), aspect="equal", xlabel="u", ylabel="v")
     axis.set_title(
         "No grating lobe at any scan angle" if free > np.pi / 2 - 1e-9 else f"Free of grating lobes to {arc(free)}"
     )
+
+
+def _surface_circles(axis: Any, job: Job, k: float, reach: float, rim: float) -> None:
+    """Dashed circles on which the beam excites a surface wave of the bare stack through a Floquet wave."""
+    waves = [item.wave for item in surface_waves(job) if item.frequency == float(job.frequency[-1])]
+    turn = np.linspace(0, 2 * np.pi, 361)
+    circle, lattice = np.stack([np.cos(turn), np.sin(turn)]), job.cell.lattice
+    for n, wave in enumerate(waves):
+        beta, colour = wave.beta.real, HUES[(n + 2) % len(HUES)]
+        for order in near_orders(lattice, k, beta):
+            g = -(order @ lattice.reciprocal) / k
+            axis.plot(*(g[:, None] + beta * circle), "--", color=colour, linewidth=1.2, zorder=2)
+            size = float(np.hypot(*g))
+            spot = g * (1 - beta / size)  # the point of the circle nearest to broadside
+            if np.hypot(*spot) < max(rim, 0.9) and np.abs(spot).max() < reach - 0.2:
+                axis.annotate(
+                    wave.name, spot, fontsize=7, color=colour, ha="center", va="center", zorder=5,
+                    bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.6, "alpha": 0.85},
+                )  # fmt: skip
 
 
 def _perspective(axis: Any, cell: UnitCell) -> None:
@@ -147,6 +176,11 @@ def _perspective(axis: Any, cell: UnitCell) -> None:
     outline = np.array([[*corner, base] for corner in _cell_corners(cell) * 1e3])
     face = "#dfe3e6" if cell.ground else "none"
     axis.add_collection3d(Poly3DCollection([outline], facecolor=face, edgecolor=MUTED, linewidth=0.8, alpha=0.6))
+    for height in [] if cell.stack is None else cell.stack.interfaces[1:] * 1e3:
+        face_of_layer = np.array([[*corner, height] for corner in _cell_corners(cell) * 1e3])
+        axis.add_collection3d(
+            Poly3DCollection([face_of_layer], facecolor=LAYER, edgecolor=MUTED, linewidth=0.5, alpha=0.18)
+        )
     for c in range(len(mesh.names)):
         own = mesh.triangles[mesh.triangle_conductor == c]
         if len(own):
@@ -159,7 +193,8 @@ def _perspective(axis: Any, cell: UnitCell) -> None:
     for gaps, colour, marker in _markers(cell):
         if len(gaps):
             axis.scatter(*(gaps.T * 1e3), color=colour, marker=marker, s=26, depthshade=False, zorder=10)
-    everything = np.vstack([outline, points])
+    top = base if cell.stack is None else cell.stack.top * 1e3
+    everything = np.vstack([outline, points, [[*points[0, :2], top]]])
     low, high = everything.min(axis=0), everything.max(axis=0)
     size = np.maximum(high - low, 0.12 * (high - low).max())
     middle = (low + high) / 2

@@ -16,9 +16,11 @@ from ..geometry.gap_checks import check_gaps
 from ..geometry.lattice import Lattice
 from ..geometry.placement import place_gap
 from ..geometry.port import Load, Port
+from ..geometry.stack import Stack
 from . import build
 from .fields import Values, read_table, write_table
 from .job import Expectation, Job, ScanPlan
+from .layers import build_stack, check_conductors, sized
 from .quantity import SPEED_OF_LIGHT, Quantities
 from .scan_plan import build_scan_plan
 from .schema import CONDUCTORS, MOST_SOLUTIONS, MOST_TABLES, NOT_YET, REPEATED, SINGLE, STEEPEST, TOP, Table
@@ -69,9 +71,7 @@ def _load(path: Path) -> str:
             f"the file is not UTF-8 text: byte 0x{data[fault.start]:02x} in line {line}.", allowed="UTF-8"
         ) from None
     if not text.strip():
-        raise InputError(
-            "the file is empty.", allowed="a case with title, [band], [lattice], [[conductor]], [[port]]"
-        )
+        raise InputError("the file is empty.", allowed="a case with title, [band], [lattice], [[conductor]], [[port]]")
     return text
 
 
@@ -80,9 +80,7 @@ def parse_case(text: str, *, path: Path | None = None, overrides: Mapping[str, s
     raw = _parse_toml(text)
     _check_tables(raw)
     quantities = Quantities(_plain_table(raw, "parameters"), overrides)
-    top = read_table(
-        {name: value for name, value in raw.items() if name in TOP.keys}, TOP, "top level", quantities
-    )
+    top = read_table({name: value for name, value in raw.items() if name in TOP.keys}, TOP, "top level", quantities)
     single = {name: _single(raw, name, table, quantities) for name, table in SINGLE.items()}
     repeated = {name: _repeated(raw, name, quantities) for name in REPEATED}
     build.check_names(repeated)
@@ -90,9 +88,7 @@ def parse_case(text: str, *, path: Path | None = None, overrides: Mapping[str, s
         raise InputError("there is no [[conductor]].", allowed="at least one")
     draft = _draft(top, single, repeated, (path or Path("case.toml")).parent)
     expect = tuple(
-        build.build_expectation(
-            values, draft.frequencies, draft.ports, _place("expect", k, values), quantities
-        )
+        build.build_expectation(values, draft.frequencies, draft.ports, _place("expect", k, values), quantities)
         for k, values in enumerate(repeated["expect"], start=1)
     )
     scan = _scan_plan(single["scan"], expect)
@@ -112,6 +108,7 @@ def parse_case(text: str, *, path: Path | None = None, overrides: Mapping[str, s
         element_size=draft.element_size,
         remesh=draft.cell,
         expect=expect,
+        expected_to_fail=top["expected_verdict"] == "failed",
     )
 
 
@@ -119,9 +116,7 @@ def _parse_toml(text: str) -> dict[str, object]:
     try:
         return tomllib.loads(text)
     except tomllib.TOMLDecodeError as fault:
-        raise InputError(
-            f"this is not TOML: {fault}.", hint='Quantities stand in quotes: radius = "0.5 mm".'
-        ) from None
+        raise InputError(f"this is not TOML: {fault}.", hint='Quantities stand in quotes: radius = "0.5 mm".') from None
     except ValueError:
         raise InputError("this is not TOML: a whole number has thousands of digits.") from None
     except RecursionError:
@@ -142,9 +137,7 @@ def _check_tables(raw: Mapping[str, object]) -> None:
                 hint=nearest(name, known),
             )
     if isinstance(raw.get("ground"), dict):
-        raise InputError(
-            "[ground] is no table.", where="[ground]", hint="Write ground = true above the first table."
-        )
+        raise InputError("[ground] is no table.", where="[ground]", hint="Write ground = true above the first table.")
 
 
 def _plain_table(raw: Mapping[str, object], name: str) -> dict[str, object]:
@@ -158,22 +151,16 @@ def _single(raw: Mapping[str, object], name: str, table: Table, quantities: Quan
     if name not in raw and name in ("band", "lattice"):
         raise InputError(f"[{name}] is missing.", allowed=f"[{name}] with {', '.join(table.keys)}")
     if isinstance(raw.get(name), list):
-        raise InputError(
-            f"[[{name}]] is given as a list of tables.", where=f"[[{name}]]", allowed=f"one [{name}]"
-        )
+        raise InputError(f"[[{name}]] is given as a list of tables.", where=f"[[{name}]]", allowed=f"one [{name}]")
     return read_table(raw.get(name, {}), table, f"[{name}]", quantities)
 
 
 def _repeated(raw: Mapping[str, object], name: str, quantities: Quantities) -> list[Values]:
     rows = raw.get(name, [])
     if not isinstance(rows, list) or not all(isinstance(row, dict) for row in rows):
-        raise InputError(
-            f"'{name}' is not a list of tables.", where=f"[{name}]", allowed=f"[[{name}]], once for each"
-        )
+        raise InputError(f"'{name}' is not a list of tables.", where=f"[{name}]", allowed=f"[[{name}]], once for each")
     if len(rows) > MOST_TABLES:
-        raise InputError(
-            f"there are {len(rows)} tables.", where=f"[[{name}]]", allowed=f"at most {MOST_TABLES}"
-        )
+        raise InputError(f"there are {len(rows)} tables.", where=f"[[{name}]]", allowed=f"at most {MOST_TABLES}")
     out = []
     for number, row in enumerate(rows, start=1):
         place = _place(name, number, row)
@@ -214,6 +201,7 @@ class _Draft:
     frequencies: np.ndarray
     element_size: float
     method: str
+    stack: Stack | None
 
     def cell(self, factor: float = 1.0) -> UnitCell:
         from ..geometry.mesher import mesh_conductors
@@ -227,13 +215,12 @@ class _Draft:
             gaps=gaps,
             method=self.method,
             refinement=1.0 / factor,
+            interfaces=() if self.stack is None else self.stack.interfaces[1 if self.ground else 0 :].tolist(),
         )
-        return UnitCell(self.lattice, mesh, self.ports, self.loads, self.ground)
+        return UnitCell(self.lattice, mesh, self.ports, self.loads, self.ground, self.stack)
 
 
-def _draft(
-    top: Values, single: Mapping[str, Values], repeated: Mapping[str, list[Values]], folder: Path
-) -> _Draft:
+def _draft(top: Values, single: Mapping[str, Values], repeated: Mapping[str, list[Values]], folder: Path) -> _Draft:
     frequencies = build.build_frequencies(single["band"])
     wavelength = SPEED_OF_LIGHT / float(frequencies[-1])
     lattice = Lattice(single["lattice"]["a"], single["lattice"]["b"])
@@ -243,14 +230,15 @@ def _draft(
         for k, values in enumerate(repeated["conductor"], start=1)
     ]
     build.check_wire_radii(conductors, wavelength)
+    stack = build_stack(repeated["layer"], repeated["sheet"], ground=top["ground"], wavelength=wavelength)
+    if stack is not None:
+        check_conductors(conductors, stack)
     meshed = build.read_mesh_shapes(conductors, 1e-6 * wavelength)
     gaps = []
     for table in ("port", "load"):
         for k, values in enumerate(repeated[table], start=1):
             where = _place(table, k, values)
-            gap = place_gap(
-                build.build_placement(values), conductors, ground=top["ground"], where=where, meshed=meshed
-            )
+            gap = place_gap(build.build_placement(values), conductors, ground=top["ground"], where=where, meshed=meshed)
             build.check_gap_width(gap, wavelength, where)
             values["width"] = gap.width
             gaps.append((where, gap))
@@ -261,10 +249,12 @@ def _draft(
     if not any(abs(port.drive) > 0 for port in ports):
         told = "there is no [[port]]" if not ports else "every port's drive is zero"
         raise InputError(f"{told}.", where="[[port]]", allowed="at least one port that is driven")
+    by_medium = stack is not None and single["mesh"]["element_size"] is None
     size = _element_size(single["mesh"], wavelength)
-    return _Draft(
-        lattice, tuple(conductors), ports, loads, top["ground"], frequencies, size, single["mesh"]["method"]
-    )
+    if stack is not None and by_medium:
+        conductors = sized(conductors, repeated["conductor"], stack, size)
+    method = single["mesh"]["method"]
+    return _Draft(lattice, tuple(conductors), ports, loads, top["ground"], frequencies, size, method, stack)
 
 
 def _element_size(mesh: Values, wavelength: float) -> float:
@@ -278,8 +268,7 @@ def _element_size(mesh: Values, wavelength: float) -> float:
         size = mesh["element_size"] = wavelength / (count or ELEMENTS_PER_WAVELENGTH)
     if size > wavelength / 6:
         raise InputError(
-            f"element_size of {1e3 * size:.4g} mm is {size / wavelength:.3g} wavelengths at the highest "
-            "frequency.",
+            f"element_size of {1e3 * size:.4g} mm is {size / wavelength:.3g} wavelengths at the highest frequency.",
             where="[mesh], key 'element_size'",
             allowed=f"up to a sixth, {1e3 * wavelength / 6:.4g} mm",
         )
@@ -340,8 +329,6 @@ def _resolved(top: Values, single: Mapping[str, Values], repeated: Mapping[str, 
         for values in rows:
             table = REPEATED[name]
             parts.append(
-                write_table(
-                    values, table if isinstance(table, Table) else table[values["kind"]], f"[[{name}]]"
-                )
+                write_table(values, table if isinstance(table, Table) else table[values["kind"]], f"[[{name}]]")
             )
     return "\n".join(parts)

@@ -13,9 +13,11 @@ import numpy as np
 from ..solver.pattern import LIGHT_SPEED, decibel
 from .expect import compare
 from .judge import CLOSE, FAILED, MET, OPEN, Verdict, degrees, judge, number
+from .layers import layer_rows
 from .plot import Drawing, driven_ports
 from .progress import duration
 from .result import CONVENTIONS, Result
+from .surface_waves import WHY, wave_header, wave_rows
 
 MARKS = {MET: "met", FAILED: "failed", CLOSE: "close", OPEN: "open"}
 TABLE_ANGLES = np.radians([0, 15, 30, 45, 60, 75])
@@ -58,6 +60,11 @@ def report_text(result: Result, figures: Sequence[Drawing]) -> str:
         several_ports=len(driven_ports(result)) > 1,
         checks=_checks(result),
         conductors=_conductors(result),
+        layers=[] if result.job.cell.stack is None else layer_rows(result.job.cell.stack),
+        surface_header=wave_header(result.job),
+        surface_waves=wave_rows(result.job),
+        surface_why=WHY,
+        losses=_losses(result),
         ports=_ports(result),
         loads=_loads(result),
         notes=result.sweep.notes,
@@ -233,6 +240,27 @@ def _checks(result: Result) -> list[tuple[str, str]]:
         ("Largest relative residual of the linear solves", f"{result.sweep.residual.max():.1e}"),
         ("Largest absorbed share of available power", f"{result.response.absorbed.sum(-1).max():.4f}"),
     ]
+
+
+def _losses(result: Result) -> list[dict[str, str]]:
+    """What every absorber takes of the available power: at broadside (the direction nearest to it) and at most."""
+    sweep, absorbed = result.sweep, result.response.absorbed
+    middle, nearest = len(sweep.frequency) // 2, int(np.argmin(np.hypot(sweep.scan.u, sweep.scan.v)))
+    rows = []
+    for n, name in enumerate(sweep.loss_names):
+        share = absorbed[..., n]
+        f, s = np.unravel_index(np.argmax(share), share.shape)
+        theta = float(np.arcsin(min(1.0, np.hypot(sweep.scan.u[s], sweep.scan.v[s]))))
+        phi = float(np.arctan2(sweep.scan.v[s], sweep.scan.u[s]))
+        place = f"theta {degrees(theta)}, phi {degrees(phi)}, {sweep.frequency[f] / 1e9:.6g} GHz"
+        rows.append(
+            {"name": name, "broadside": _percent(share[middle, nearest]), "most": _percent(share[f, s]), "place": place}
+        )
+    return rows
+
+
+def _percent(share: float) -> str:
+    return f"{100 * share:.2g} %"
 
 
 def _conductors(result: Result) -> list[dict[str, Any]]:

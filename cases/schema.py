@@ -78,16 +78,41 @@ TOP = _table(
     title=Key("text", "What the case is, in one line.", required=True),
     notes=Key("text", "Free text: assumptions, sources, history.", default=""),
     ground=Key("flag", "A perfectly conducting plane at z = 0 below everything.", default=False),
-)
+    expected_verdict=Key("choice", "In ready-made cases: whether the limits are expected to be met.",
+                         choices=("met", "failed"), default="met"),
+)  # fmt: skip
+
+LAYER = _table(
+    "[[layer]]",
+    "A dielectric layer; from z = 0 upwards in the order given. Below the first: the ground, or air.",
+    name=Key("text", "Name, unique among the layers.", default=""),
+    thickness=_length("Thickness.", required=True),
+    permittivity=Key("ratio", "Relative permittivity, real part; below 1 only with `artificial`.", required=True,
+                     above=0.0, high=1000.0),
+    loss_tangent=Key("ratio", "Loss tangent: the permittivity is permittivity (1 - j loss_tangent). A plain number, "
+                     "not in per cent.", default=0, low=0.0, high=1.0),
+    permeability=Key("ratio", "Relative permeability.", default=1, above=0.0, high=1000.0),
+    artificial=Key("flag", "The material is an artificial one, whose permittivity or permeability may lie below 1.",
+                   default=False),
+)  # fmt: skip
+
+SHEET = _table(
+    "[[sheet]]",
+    "A sheet much thinner than a wavelength, given by its surface impedance, the same at all frequencies.",
+    name=Key("text", "Name in messages and the table of losses.", default=""),
+    height=Key("length", "Height above z = 0."),
+    on=Key("text", "Instead of `height`: the layer on whose upper face the sheet lies."),
+    resistance=Key("resistance", "Real part, ohm per square.", default="0 ohm", low=0.0),
+    reactance=Key("resistance", "Imaginary part, ohm per square; capacitive sheets have it negative.",
+                  default="0 ohm"),
+)  # fmt: skip
 
 BAND = _table(
     "[band]",
     "Frequencies: start, stop and points, or one frequency, or a list of them.",
     start=Key("frequency", "Lowest frequency.", above=0.0),
     stop=Key("frequency", "Highest frequency.", above=0.0),
-    points=Key(
-        "count", "Number of frequencies from start to stop, evenly spaced.", low=1, high=MOST_FREQUENCIES
-    ),
+    points=Key("count", "Number of frequencies from start to stop, evenly spaced.", low=1, high=MOST_FREQUENCIES),
     frequency=Key("frequency", "A single frequency.", above=0.0),
     frequencies=Key("frequency", "A list of frequencies.", shape=("n",), above=0.0),
 )
@@ -172,9 +197,7 @@ PORT = _table(
     "[[port]]",
     "A gap with a generator.",
     **_PLACE,
-    resistance=Key(
-        "resistance", "Reference and generator resistance.", default="50 ohm", above=0.0, high=1e6
-    ),
+    resistance=Key("resistance", "Reference and generator resistance.", default="50 ohm", above=0.0, high=1e6),
     drive=Key("wave", "Amplitude @ phase of the case's excitation, as a power wave.", default="1 @ 0 deg"),
 )
 
@@ -250,9 +273,7 @@ EXPECT = _table(
     value=Key("any", "The value, with its unit.", required=True),
     tolerance=Key("any", "Largest deviation, in the same unit.", required=True),
     origin=Key("text", "Where the value comes from.", required=True),
-    frequency=Key(
-        "frequency", "Which frequency of the band; may be left out if there is one only.", above=0.0
-    ),
+    frequency=Key("frequency", "Which frequency of the band; may be left out if there is one only.", above=0.0),
     theta=Key("angle", "Scan angle from broadside.", default="0 deg", low=0.0, high=STEEPEST),
     phi=Key("angle", "Azimuth from x.", default="0 deg"),
     port=Key("text", "Which port; default: the first."),
@@ -263,9 +284,8 @@ SINGLE: Mapping[str, Table] = MappingProxyType({
     "accuracy": ACCURACY, "limits": LIMITS,
 })  # fmt: skip
 REPEATED: Mapping[str, Table | Mapping[str, Table]] = MappingProxyType({
-    "conductor": CONDUCTORS, "port": PORT, "load": LOAD, "expect": EXPECT,
+    "layer": LAYER, "sheet": SHEET, "conductor": CONDUCTORS, "port": PORT, "load": LOAD, "expect": EXPECT,
 })  # fmt: skip
 NOT_YET: Mapping[str, str] = MappingProxyType({
-    "layer": "layered stacks are not in this version.",
     "breadboard": "finite breadboards are not in this version.",
 })  # fmt: skip

@@ -63,7 +63,6 @@ WORDS = [
     ),
     BadCase("no conductor", HEAD, ("no [[conductor]]",)),
     BadCase("no port", WIRE[: WIRE.index("[[port]]")], ("no [[port]]",)),
-    more("layers", '[[layer]]\nthickness = "1 mm"\n', "[[layer]]", "layered stacks are not in this version"),
     more(
         "conductor name twice",
         '[[conductor]]\nkind = "wire"\nname = "dipole"\nradius = "0.3 mm"\n'

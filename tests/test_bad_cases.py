@@ -2,6 +2,7 @@
 
 import pytest
 from bad_case_base import LINE, MESH, PLATE, STRIP, WIRE, BadCase, vtk
+from bad_case_layers import PRINTED
 from bad_cases import BAD_CASES
 from scanward.cases.read import parse_case, read_case
 from scanward.geometry.errors import InputError
@@ -18,7 +19,7 @@ def write(case: BadCase, folder):
 every_bad_case = pytest.mark.parametrize("case", BAD_CASES, ids=[case.name for case in BAD_CASES])
 
 
-@pytest.mark.parametrize("text", [WIRE, STRIP, PLATE], ids=["wire", "strip", "plate"])
+@pytest.mark.parametrize("text", [WIRE, STRIP, PLATE, PRINTED], ids=["wire", "strip", "plate", "printed"])
 def test_the_cases_are_sound_before_the_mistake(text):
     assert parse_case(text).cell.ports
 

@@ -1,0 +1,90 @@
+"""Broken stacks: layers, sheets, and conductors that do not fit them."""
+
+from __future__ import annotations
+
+from bad_case_base import HEAD, BadCase, edit
+
+LAYERS = """[[layer]]
+name = "base"
+thickness = "3.2 mm"
+permittivity = 2.2
+loss_tangent = 0.001
+[[layer]]
+name = "foam"
+thickness = "4 mm"
+permittivity = 1.06
+[[sheet]]
+name = "film"
+on = "foam"
+reactance = "-200 ohm"
+"""
+
+PRINTED = (
+    HEAD
+    + LAYERS
+    + """[[conductor]]
+kind = "strip"
+name = "dipole"
+start = ["-arm", 0, "3.2 mm"]
+end = ["arm", 0, "3.2 mm"]
+width = "1 mm"
+[[port]]
+name = "feed"
+conductor = "dipole"
+at = [0, 0, "3.2 mm"]
+"""
+)
+
+UPRIGHT = """[[conductor]]
+kind = "plate"
+name = "fin"
+centre = [0, "8 mm", "3 mm"]
+size = ["2 mm", "4 mm"]
+normal = [0, 1, 0]
+"""
+
+
+def printed(name: str, old: str, new: str, *says: str) -> BadCase:
+    return BadCase(name, edit(PRINTED, old, new), says)
+
+
+def added(name: str, addition: str, *says: str) -> BadCase:
+    """Tables added behind the layers."""
+    return BadCase(name, PRINTED.replace("[[conductor]]", addition + "[[conductor]]", 1), says)
+
+
+BASE = 'thickness = "3.2 mm"'
+STACKS = [
+    printed("negative thickness", BASE, 'thickness = "-3.2 mm"', "[[layer]] 'base', key 'thickness'", "more than 0 mm"),
+    printed("no thickness at all", BASE, 'thickness = "0 mm"', "[[layer]] 'base', key 'thickness'", "more than 0 mm"),
+    printed("thickness missing", BASE + "\n", "", "'thickness' is missing", "[[layer]] 'base'"),
+    printed("thickness in ohm", BASE, 'thickness = "3.2 ohm"', "key 'thickness'", "a length"),
+    printed("endless layer", BASE, 'thickness = "3 km"', "wavelengths at the highest frequency", "air without end"),
+    printed("infinite layer", BASE, "thickness = inf", "key 'thickness'"),
+    printed("thickness misspelt", BASE, 'thicknes = "3.2 mm"', "no key 'thicknes'", "Did you mean 'thickness'"),
+    printed("permittivity below 1", "permittivity = 2.2", "permittivity = 0.9", "0.9 is out", "artificial = true"),
+    printed("permittivity zero", "permittivity = 2.2", "permittivity = 0", "key 'permittivity'", "more than 0"),
+    printed("permittivity missing", "permittivity = 2.2\n", "", "'permittivity' is missing"),
+    printed("permittivity with a unit", "permittivity = 2.2", 'permittivity = "2.2 mm"', "key 'permittivity'"),
+    printed("negative loss", "loss_tangent = 0.001", "loss_tangent = -0.001", "key 'loss_tangent'", "0"),
+    printed("loss in per cent", "loss_tangent = 0.001", "loss_tangent = 2", "key 'loss_tangent'", "at most 1"),
+    printed("permeability below 1", "loss_tangent = 0.001", "permeability = 0.5", "permeability = 0.5", "artificial"),
+    printed("two layers of one name", 'name = "foam"', 'name = "base"', "the name 'base' is used twice"),
+    printed("layer as one table", "[[layer]]\nname = \"base\"", "[layer]\nname = \"base\"", "TOML"),
+    printed("sheet on no layer", 'on = "foam"', 'on = "fom"', "no layer 'fom'", "Did you mean 'foam'"),
+    printed("sheet nowhere", 'on = "foam"\n', "", "neither height nor on"),
+    printed("sheet given twice", 'on = "foam"', 'on = "foam"\nheight = "7.2 mm"', "height and on are both given"),
+    printed("sheet above the stack", 'on = "foam"', 'height = "9 mm"', "lies outside the layers", "[[sheet]] 'film'"),
+    printed("sheet on the ground", 'on = "foam"', 'height = "0 mm"', "lies on the ground"),
+    printed("perfect sheet", 'reactance = "-200 ohm"', 'reactance = "0 ohm"', "not that of a passive sheet"),
+    printed("active sheet", 'reactance = "-200 ohm"', 'resistance = "-20 ohm"', "key 'resistance'"),
+    added("two sheets in one place", '[[sheet]]\nheight = "7.2 mm"\nresistance = "50 ohm"\n', "two sheets"),
+    printed("sheet under the dipole", 'on = "foam"', 'on = "base"', "it lies on the sheet", "[[conductor]] 'dipole'"),
+    BadCase("dipole a hair too high", PRINTED.replace('"3.2 mm"]\n', '"3.201 mm"]\n'),
+            ("[[conductor]] 'dipole'", "z = 3.201 mm", "off the interface at 3.2 mm")),
+    BadCase("conductor in the ground", PRINTED.replace('"3.2 mm"]\n', '"-3 mm"]\n'),
+            ("[[conductor]] 'dipole'", "ground")),
+    added("face across an interface", UPRIGHT, "[[conductor]] 'fin'", "across the interface or sheet at 3.2 mm"),
+    BadCase("sheet without layers", PRINTED.replace(LAYERS, '[[sheet]]\nheight = "1 mm"\nresistance = "50 ohm"\n'),
+            ("lies outside the layers",)),
+]  # fmt: skip
