@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from .network import port_response
 from .reduced import ReducedModel
 from .reduced_build import ReducedBuilder
+from .reduced_far import KernelMemory
 from .snapshots import Snapshots, take_snapshot
 from .sweep import CellSolver, wavenumber
 from .training import random_points, training_points
@@ -121,6 +122,7 @@ class _Greedy:
         self.kept = start if start is not None else Snapshots.none(solver.operator.n, n_port)
         self.used: list[Floats] = []
         self.basis_size = 0
+        self.memory = KernelMemory()
 
     def run(self) -> tuple[ReducedModel, Certificate]:
         first = self.training.spread(FIRST)
@@ -147,11 +149,13 @@ class _Greedy:
 
     def estimates(self, model: ReducedModel) -> Floats:
         """Estimated error at every training point."""
+        model.exact.memory = self.memory
         found = np.empty(len(self.training.points))
         for frequency in np.unique(self.training.points[:, 0]):
             pick = np.flatnonzero(self.training.points[:, 0] == frequency)
             k = wavenumber(float(frequency))
             found[pick] = model.solve(k, k * self.training.points[pick, 1:], estimate=True).estimate
+        model.exact.memory = None
         return found
 
     def _taken(self) -> Floats:

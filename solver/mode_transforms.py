@@ -131,7 +131,10 @@ class ModeTransforms:
 
     def reversed_at(self, polynomials: Floats, pick: Ints | slice) -> list[Complexes]:
         """Transforms at ``-(kt + G)`` of the picked orders, like `at`."""
-        return [_combine(polynomials * self._parity, c[:, self.negative[pick]]) for c in self.coefficients]
+        polynomials = polynomials * self._parity
+        if isinstance(pick, slice):  # fewer points than polynomials: the result is less to move than the coefficients
+            return [_combine(polynomials, c)[:, self.negative[pick]] for c in self.coefficients]
+        return [_combine(polynomials, c[:, self.negative[pick]]) for c in self.coefficients]
 
     def find(self, orders: Ints) -> Ints:
         """Index of each order (n, 2); -1 where it is not kept."""

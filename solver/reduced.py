@@ -158,9 +158,10 @@ class ReducedModel:
 
     def _groups(self, reduced: Floats) -> list[Ints]:
         """Batches of points close together, small enough for the memory they need."""
-        width = sum(c.shape[2] * c.shape[3] for c in self.exact.transforms.coefficients) * self.size
+        size = max(self.size, 48)  # the same batches while a basis grows: their kernels may be remembered
+        width = sum(c.shape[2] * c.shape[3] for c in self.exact.transforms.coefficients) * size
         modes = max(4.0, np.pi * self.view.window.high**2 * self.view.lattice.area / (4 * np.pi**2))
-        count = int(np.clip(BATCH_BYTES / (16 * (3 * width * modes + 4 * self.size**2)), 1, 1024))
+        count = int(np.clip(BATCH_BYTES / (16 * (3 * width * modes + 4 * size**2)), 1, 1024))
         groups = [np.arange(len(reduced))]
         while max(len(group) for group in groups) > count:
             halves = []

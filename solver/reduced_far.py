@@ -30,14 +30,16 @@ KEPT_BYTES = 4e8  # kernels at the samples are kept for the next basis vectors u
 
 
 class ExactWaves:
-    """The sum over the Floquet waves kept exact, of transforms of r basis vectors."""
+    """The sum over the Floquet waves kept exact, of transforms of r basis vectors.
+
+    `memory` : of kernels that will be asked for again with a larger basis; None: none are kept
+    """
 
     def __init__(self, view: CellView):
         self.view, self.zone = view, BrillouinZone(view.lattice)
         reach = view.window.high + float(np.linalg.norm(self.zone.box))
-        self.transforms = ModeTransforms(
-            view.cloud, view.lattice, view.exact.layers, reach, self.zone, view.tolerance
-        )  # fmt: skip
+        self.transforms = ModeTransforms(view.cloud, view.lattice, view.exact.layers, reach, self.zone, view.tolerance)
+        self.memory: KernelMemory | None = None
 
     def copy(self) -> ExactWaves:
         """As it is now, whatever is appended later."""
@@ -65,11 +67,35 @@ class ExactWaves:
         self, k: Floats, kt: Floats, plus: list[Complexes], minus: list[Complexes], pick: Ints, first: int = 0
     ) -> Complexes:
         """The same from the transforms of the picked orders at hand."""
-        waves = kt[:, None] + self.transforms.orders[pick] @ self.view.lattice.reciprocal
-        square = (waves**2).sum(axis=2)
-        weight = self.view.window(square)
-        by_k = (_kernels(self.view.exact, float(one), square, weight) for one in k)
+        by_k = (self._kernels(float(one), kt, pick) for one in k)
         return _forms(by_k, self.transforms, plus, minus, first)
+
+    def _kernels(self, k: float, kt: Floats, pick: Ints) -> Kernels:
+        """Weighted kernels at points kt (n, 2), from memory if it holds them."""
+        key = (k, kt.tobytes())
+        kernels = self.memory.found.get(key) if self.memory else None
+        if kernels is None:
+            waves = kt[:, None] + self.transforms.orders[pick] @ self.view.lattice.reciprocal
+            square = (waves**2).sum(axis=2)
+            kernels = _kernels(self.view.exact, k, square, self.view.window(square))
+            if self.memory:
+                self.memory.keep(key, kernels)
+        return kernels
+
+
+class KernelMemory:
+    """Kernels by wavenumber and points, up to KEPT_BYTES."""
+
+    def __init__(self) -> None:
+        self.found: dict[tuple[float, bytes], Kernels] = {}
+        self.size = 0
+
+    def keep(self, key: tuple[float, bytes], kernels: Kernels) -> None:
+        """Remember one more, if there is room."""
+        distinct = {id(d): d.nbytes for entries in kernels.values() for _, _, d in entries}
+        if self.size + sum(distinct.values()) < KEPT_BYTES:
+            self.size += sum(distinct.values())
+            self.found[key] = kernels
 
 
 class SmoothRest:
