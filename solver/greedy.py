@@ -27,7 +27,8 @@ Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 
 FIRST = 6  # snapshots before the first estimate
-AT_ONCE = 2  # snapshots added in one step
+AT_ONCE = 2  # snapshots added in one step,
+AT_ONCE_TALL = 4  # or with conductors that need levels, whose projection costs more than their solution
 HELD_BACK = 4  # random points, and
 WORST = 2  # points predicted worst, solved in full to confirm
 SAFETY = 2.0  # the estimate must fall below the wanted error over this
@@ -123,6 +124,8 @@ class _Greedy:
         self.used: list[Floats] = []
         self.basis_size = 0
         self.memory = KernelMemory()
+        tall = any(len(layer.heights) > 1 for layer in solver.operator.far.layers)
+        self.at_once = AT_ONCE_TALL if tall else AT_ONCE
 
     def run(self) -> tuple[ReducedModel, Certificate]:
         first = self.training.spread(FIRST)
@@ -132,10 +135,10 @@ class _Greedy:
         checked: list[tuple[Floats, float]] = []
         while True:
             estimates = self.estimates(model)
-            worst = self.training.separate_worst(estimates, self._taken(), max(AT_ONCE, WORST))
+            worst = self.training.separate_worst(estimates, self._taken(), max(self.at_once, WORST))
             room = self.limit - len(self.used)
             if estimates.max() > self.error / SAFETY and room > 0:
-                self._add(worst[: min(AT_ONCE, room)])
+                self._add(worst[: min(self.at_once, room)])
                 model = self.builder.model()
             else:
                 checked = self._confirm(model, np.concatenate([self.draw(HELD_BACK), worst[:WORST]]))

@@ -221,23 +221,34 @@ def _forms(
     Only rows and columns from `first` on; the others are zero.
     """
     n, r = len(plus[0]), plus[0].shape[-1]
-    found = []
+    added_plus, added_minus = [t[..., first:] for t in plus], [t[..., first:] for t in minus]
+    rights, lefts = [], []
     for kernels in by_k:
-        result = np.zeros((n, r, r), dtype=complex)
-        right = _applied(kernels, [t[..., first:] for t in plus], table.components)
-        for left, applied in zip(minus, right, strict=True):
-            result[:, :, first:] += left.reshape(n, -1, r).swapaxes(1, 2) @ applied.reshape(n, -1, r - first)
+        rights.append(_applied(kernels, added_plus, table.components))
         if first:
-            reverse = {
-                (b, a): [(column, row, d.swapaxes(2, 3)) for row, column, d in entries]
-                for (a, b), entries in kernels.items()
-            }
-            left = _applied(reverse, [t[..., first:] for t in minus], table.components)
-            for applied, right in zip(left, plus, strict=True):
-                old = np.ascontiguousarray(right[..., :first]).reshape(n, -1, first)
-                result[:, first:, :first] += applied.reshape(n, -1, r - first).swapaxes(1, 2) @ old
-        found.append(result)
-    return np.stack(found, axis=1)
+            lefts.append(_applied(_transposed(kernels), added_minus, table.components))
+    result = np.zeros((n, len(rights), r, r), dtype=complex)
+    # all wavenumbers side by side: few long products instead of many short ones
+    for whole, applied in zip(minus, zip(*rights, strict=True), strict=True):
+        product = whole.reshape(n, -1, r).swapaxes(1, 2) @ _beside(applied)
+        result[:, :, :, first:] += product.reshape(n, r, len(applied), -1).swapaxes(1, 2)
+    if first:
+        for whole, applied in zip(plus, zip(*lefts, strict=True), strict=True):
+            product = _beside(applied).swapaxes(1, 2) @ whole.reshape(n, -1, r)
+            result[:, :, first:, :first] += product.reshape(n, len(applied), r - first, r)[..., :first]
+    return result
+
+
+def _beside(applied: tuple[Complexes, ...]) -> Complexes:
+    """Transforms (n, ..., m) of several wavenumbers as columns side by side, (n, rows, n_k m)."""
+    n, m = len(applied[0]), applied[0].shape[-1]
+    return np.stack([one.reshape(n, -1, m) for one in applied], axis=2).reshape(n, -1, len(applied) * m)
+
+
+def _transposed(kernels: Kernels) -> Kernels:
+    return {
+        (b, a): [(column, row, d.swapaxes(2, 3)) for row, column, d in entries] for (a, b), entries in kernels.items()
+    }
 
 
 def _kernels(far: FarPart, k: float, square: Floats, weight: Floats) -> Kernels:
