@@ -59,11 +59,10 @@ class CellView:
     loss_names: tuple[str, ...]
     near: list[NearBlock] | None
 
-    @property
-    def reach(self) -> float:
-        """Transverse wavenumber beyond which Floquet waves are dropped, rad/m."""
+    def reach(self, k: float) -> float:
+        """Transverse wavenumber beyond which Floquet waves are dropped at k, rad/m."""
         index = 1.0 if self.stack is None else np.sqrt(np.abs(self.stack.permittivity * self.stack.permeability).max())
-        return float(np.hypot(self.far.split.far_radius, self.k_max * max(1.0, float(index))))
+        return float(np.hypot(self.far.split.far_radius, k * max(1.0, float(index))))
 
 
 @dataclass(frozen=True)

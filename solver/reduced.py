@@ -103,7 +103,7 @@ class ReducedModel:
     def all_transforms(self) -> ModeTransforms:
         """Transforms at every Floquet wave, for fields close to the conductors; made when first asked for."""
         view, zone = self.view, self.exact.zone
-        reach = view.reach + float(np.linalg.norm(zone.box))
+        reach = view.reach(view.k_max) + float(np.linalg.norm(zone.box))
         table = ModeTransforms(view.cloud, view.lattice, view.far.layers, reach, zone, view.tolerance)
         table.extend(self.vectors)
         return table

@@ -115,7 +115,7 @@ class SmoothRest:
     def __init__(self, view: CellView, exact: ExactWaves, k_min: float, k_max: float):
         self.view, self.exact, self.zone = view, exact, exact.zone
         self.k_min, self.k_max = k_min, k_max
-        reach = view.reach + float(np.linalg.norm(self.zone.box))
+        reach = view.reach(view.k_max) + float(np.linalg.norm(self.zone.box))
         self.transforms = ModeTransforms(view.cloud, view.lattice, view.far.layers, reach, self.zone, view.tolerance)
         length = (AIR_REACH if view.stack is None else LAYERED_REACH) * np.sqrt(view.lattice.area)
         spacing = 2 * np.pi / np.linalg.norm(view.lattice.reciprocal, axis=1)

@@ -14,6 +14,8 @@ from .reduced_waves import level_heights
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 
+SHARE_BYTES = 4e7  # memory of the transforms at points whose layers are handled together
+
 
 def loss_matrices(model: ReducedModel, batch: Batch, k: float, waves: Complexes) -> Complexes:
     """Hermitian loss matrices (n, n_loss, n_port, n_port), in the order of `CellView.loss_names`.
@@ -62,28 +64,34 @@ def _shares(model: ReducedModel, batch: Batch, k: float) -> Floats:
     lossy += [(1 / complex(sheet.impedance)).real > 0 for sheet in stack.sheets]
     if sum(lossy) == 1:
         return np.broadcast_to(np.array(lossy, dtype=float), (len(batch.index), len(lossy)))
-    return np.array([_share(model, batch, k, i, stack) for i in range(len(batch.index))])
+    table = model.all_transforms
+    size = 16 * len(table.orders) * model.size * sum(c.shape[2] * c.shape[3] for c in table.coefficients)
+    step = max(1, int(SHARE_BYTES / size))
+    starts = range(0, len(batch.index), step)
+    return np.concatenate([_some_shares(model, batch, k, slice(i, i + step), stack) for i in starts])
 
 
-def _share(model: ReducedModel, batch: Batch, k: float, i: int, stack: Stack) -> Floats:
-    """Of one point, with every Floquet wave the direct solver takes."""
-    view, table, coefficients = model.view, model.all_transforms, batch.answer.coefficients[i]
-    kt = batch.reduced[i : i + 1]
-    pick = table.find(view.far.orders(k, kt[0]))
-    waves = kt + table.orders[pick] @ view.lattice.reciprocal
+def _some_shares(model: ReducedModel, batch: Batch, k: float, some: slice, stack: Stack) -> Floats:
+    """Of some points, with every Floquet wave the direct solver takes."""
+    view, table, coefficients = model.view, model.all_transforms, batch.answer.coefficients[some]
+    kt = batch.reduced[some]
+    waves = kt[:, None] + table.orders @ view.lattice.reciprocal
+    point, order = np.nonzero((waves**2).sum(axis=2) <= view.reach(k) ** 2)
+    waves = waves[point, order]
     angle = np.arctan2(waves[:, 1], waves[:, 0])[:, None, None]
     parts = []
-    for field, kept in zip(table.at(table.polynomials(kt), pick), table.components, strict=True):
-        xyz = np.zeros((len(waves), field.shape[3], 3, coefficients.shape[1]), dtype=complex)
+    for field, kept in zip(table.at(table.polynomials(kt), slice(None)), table.components, strict=True):
+        xyz = np.zeros((len(waves), field.shape[3], 3, coefficients.shape[2]), dtype=complex)
         for place, component in enumerate(kept):
             if component < 3:
-                xyz[:, :, component] = field[0, :, place] @ coefficients
+                flat = field[:, :, place].reshape(len(kt), -1, field.shape[4]) @ coefficients
+                xyz[:, :, component] = flat.reshape(*field.shape[:2], field.shape[3], -1)[point, order]
         x, y = xyz[:, :, 0], xyz[:, :, 1]
         across = np.cos(angle) * y - np.sin(angle) * x
         parts.append(np.stack([np.cos(angle) * x + np.sin(angle) * y, across, xyz[:, :, 2]], axis=2))
     currents, heights = np.concatenate(parts, axis=1), level_heights(view)
-    lost = np.zeros(len(stack.layers) + len(stack.sheets))
+    lost = np.zeros((len(kt), len(stack.layers) + len(stack.sheets)))
     for p in range(currents.shape[3]):
         found = absorbed_power(stack, k, np.linalg.norm(waves, axis=1), heights, currents[..., p])
-        lost += np.concatenate([found.layers.sum(axis=0), found.sheets.sum(axis=0)])
-    return lost / lost.sum()
+        np.add.at(lost, point, np.concatenate([found.layers, found.sheets], axis=1))
+    return lost / lost.sum(axis=1, keepdims=True)

@@ -155,6 +155,21 @@ def test_surface_wave_pole_is_exact():
     assert np.abs(reduced.scattering - direct.scattering).max() <= certificate.stated
 
 
+def test_blindness_narrower_than_any_grid_is_found():
+    """SECOND METHOD: a thin slab binds its wave so weakly that total reflection is 0.1 deg wide near the horizon."""
+    cell = strip_dipole(0.42, 0.02, 0.15, 0.02, ground=True, size=0.08)
+    solver = CellSolver(dataclasses.replace(cell, stack=Stack((Layer(0.01, 3.0),), True)), FREQUENCY)
+    model, certificate = build_reduced(solver, (0.95 * FREQUENCY, FREQUENCY))
+    theta = np.radians(np.linspace(86.5, 89.0, 500))
+    found = np.abs(reduced_sweep(model, FREQUENCY, ScanPoints.from_angles(theta, 0.0)).scattering.ravel())
+    peak = theta[np.argmax(found)]
+    near = ScanPoints.from_angles(peak + np.radians([-0.1, -0.02, 0.0, 0.02, 0.1]), 0.0)
+    direct, reduced = solve_sweep(solver.cell, FREQUENCY, near, solver=solver), reduced_sweep(model, FREQUENCY, near)
+    lost = 1 - np.abs(direct.scattering.ravel()) ** 2
+    assert lost[2] < 1e-3 and lost[0] > 0.02 and lost[4] > 0.005
+    assert np.abs(reduced.scattering - direct.scattering).max() <= certificate.stated
+
+
 @cache
 def over_the_zone():
     cell = wire_dipole()
