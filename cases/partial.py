@@ -18,10 +18,10 @@ CODE_FOLDERS = ("geometry", "solver")
 
 
 def fingerprint(job: Job) -> str:
-    """Hash of all that decides the numbers: resolved case, mesh, scan, tolerance, and the program's own
-    code."""
+    """Hash of all that decides the numbers: resolved case, mesh, stack, scan, tolerance, the program's own code."""
     digest = hashlib.sha256(f"{__version__}\n{job.tolerance!r}\n{job.text}\n".encode())
-    mesh, scan = job.cell.mesh, job.scan.points
+    mesh, stack, scan = job.cell.mesh, job.cell.stack, job.scan.points
+    digest.update(repr((job.cell.ground, None if stack is None else (stack.layers, stack.sheets))).encode())
     for array in (mesh.points, mesh.triangles, mesh.segments, mesh.segment_radius, scan.u, scan.v, scan.phi):
         digest.update(np.ascontiguousarray(array).tobytes())
     for file in _code_files():

@@ -11,6 +11,7 @@ import numpy as np
 
 from ..geometry.conductor import Material
 from ..geometry.port import Gap, Load, Port
+from ..geometry.stack import Layer, SheetImpedance, Stack
 from .job import Expectation, Job, Limit
 
 
@@ -24,6 +25,7 @@ def job_record(job: Job) -> str:
             "conductors": list(job.cell.mesh.names),
             "materials": [asdict(material) for material in job.cell.mesh.materials],
             "ground": int(job.cell.ground),
+            "stack": None if job.cell.stack is None else _plain(asdict(job.cell.stack)),
             "limits": [asdict(limit) for limit in job.limits],
             "expect": [asdict(expectation) for expectation in job.expect],
             "tolerance": job.tolerance,
@@ -31,21 +33,34 @@ def job_record(job: Job) -> str:
             "co_polar": job.co_polar,
             "co_polar_angle": job.co_polar_angle,
             "element_size": job.element_size,
+            "expected_to_fail": job.expected_to_fail,
         }
     )
 
 
 def read_record(text: str) -> dict[str, Any]:
-    """The record with ports, loads, materials, limits and expectations turned back into their classes."""
+    """The record with ports, loads, materials, stack, limits and expectations turned back into their classes."""
     record = json.loads(text)
     record["ports"] = tuple(
         Port(port["name"], _gap(port["gap"]), port["resistance"], complex(*port["drive"])) for port in record["ports"]
     )
     record["loads"] = tuple(Load(**{**load, "gap": _gap(load["gap"])}) for load in record["loads"])
     record["materials"] = tuple(Material(**material) for material in record["materials"])
+    record["stack"] = _stack(record.get("stack"))  # files of version 0.1.0 have none
     record["limits"] = tuple(Limit(**limit) for limit in record["limits"])
     record["expect"] = tuple(Expectation(**expectation) for expectation in record["expect"])
     return record
+
+
+def _stack(stack: dict[str, Any] | None) -> Stack | None:
+    if stack is None:
+        return None
+    sheets = (SheetImpedance(**{**sheet, "impedance": _complex(sheet["impedance"])}) for sheet in stack["sheets"])
+    return Stack(tuple(Layer(**layer) for layer in stack["layers"]), stack["ground"], tuple(sheets))
+
+
+def _complex(value: Any) -> complex:
+    return complex(*value) if isinstance(value, list) else complex(value)
 
 
 def _gap(gap: dict[str, Any]) -> Gap:
@@ -57,6 +72,8 @@ def _plain(value: Any) -> Any:
     """Arrays as lists, complex numbers as (re, im), the rest as it is; recursive."""
     if isinstance(value, dict):
         return {key: _plain(item) for key, item in value.items()}
+    if isinstance(value, list | tuple):
+        return [_plain(item) for item in value]
     if isinstance(value, np.ndarray):
         return value.tolist()
     if isinstance(value, complex):

@@ -123,7 +123,7 @@ def _job(value: dict[str, Any], record: dict[str, Any], scan: ScanPoints) -> Job
         title=record["title"],
         path=None,
         text=record["text"],
-        cell=UnitCell(lattice, mesh, record["ports"], record["loads"], bool(record["ground"])),
+        cell=UnitCell(lattice, mesh, record["ports"], record["loads"], bool(record["ground"]), record["stack"]),
         frequency=value["frequency"],
         scan=ScanPlan(scan, planes, plane_theta, value["map_u"], value["map_v"], value["map_index"], record["cone"]),
         limits=record["limits"],
@@ -133,4 +133,5 @@ def _job(value: dict[str, Any], record: dict[str, Any], scan: ScanPoints) -> Job
         element_size=record["element_size"],
         remesh=None,
         expect=record["expect"],
+        expected_to_fail=bool(record.get("expected_to_fail", False)),
     )

@@ -10,6 +10,7 @@ from scanward.cases.drawing import cell_drawing
 from scanward.cases.job import Limit
 from scanward.cases.run import INTERRUPTED, MET, MISSED, NOT_REACHED, run_case
 from scanward.cases.store import load_result
+from scanward.geometry.stack import Layer, Stack
 from scanward.solver.result import ScanPoints
 from synthetic import sheet_job, sheet_sweep
 
@@ -108,10 +109,12 @@ def test_a_damaged_kept_file_is_solved_again(tmp_path):
     assert made[0].solved == [5.4e9, 5.6e9]
 
 
-def test_fingerprint_depends_on_mesh_tolerance_and_text():
+def test_fingerprint_depends_on_mesh_stack_tolerance_and_text():
     job = sheet_job()
-    variants = (job, replace(job, tolerance=1e-5), replace(job, text="x"), replace(job, cell=job.remesh(0.5)))
-    assert len({partial.fingerprint(variant) for variant in variants}) == 4
+    cells = [replace(job.cell, stack=Stack((Layer(14e-3, e),), ground=True)) for e in (2.2, 2.2000000001)]
+    cells += [job.remesh(0.5), replace(job.cell, ground=False)]
+    variants = [job, replace(job, tolerance=1e-5), replace(job, text="x"), *(replace(job, cell=c) for c in cells)]
+    assert len({partial.fingerprint(variant) for variant in variants}) == len(variants)
     assert partial.fingerprint(job) == partial.fingerprint(sheet_job())
 
 

@@ -4,7 +4,7 @@ xarray."""
 import os
 import subprocess
 import sys
-from dataclasses import fields
+from dataclasses import fields, replace
 from pathlib import Path
 
 import numpy as np
@@ -13,6 +13,7 @@ import xarray
 from scanward.cases import store
 from scanward.cases.judge import judge
 from scanward.geometry.errors import InputError
+from scanward.geometry.stack import Layer, SheetImpedance, Stack
 from synthetic import sheet_result
 
 
@@ -45,6 +46,17 @@ def test_round_trip_keeps_everything(saved):
     again = store.load_result(path)
     same(result, again)
     assert judge(again) == judge(result)
+
+
+def test_round_trip_keeps_the_stack_and_the_expected_verdict(tmp_path):
+    result = sheet_result()
+    film = SheetImpedance(14e-3, 20 - 150j, "film")
+    stack = Stack((Layer(14e-3, 2.55, 1e-3, name="base"), Layer(4e-3, 0.8, artificial=True)), True, (film,))
+    job = replace(result.job, cell=replace(result.job.cell, stack=stack), expected_to_fail=True)
+    store.save_result(tmp_path / "result.nc", replace(result, job=job))
+    again = store.load_result(tmp_path / "result.nc").job
+    assert again.cell.stack == stack
+    assert again.expected_to_fail
 
 
 def test_a_reader_with_only_xarray_understands_it(saved):
