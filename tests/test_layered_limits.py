@@ -7,6 +7,7 @@ import dataclasses
 import numpy as np
 import pytest
 from cells import FREQUENCY, SQUARE, K, X, Y, make, point, sheet_gap
+from fine_meshes import Flat, Grading, fine_cell
 from reference_pair import ETA as ROUNDED_ETA
 from reference_slab import CURRENT_SHEETS, SLAB_REFLECTION, current_sheet_impedance, slab_reflection
 from scanward.geometry.cell import UnitCell
@@ -144,6 +145,31 @@ def test_impedance_from_200_to_3000_waves(name):
         counts.append(len(solver.operator.far.orders(K, KT)))
     assert counts[0] < 225 and counts[1] > 2900
     assert np.abs(results[0] / results[1] - 1).max() < limit
+
+
+WIDE = {
+    "0.05 of 2.55": (0.05, 2.55, 0.28, 1e-6),
+    "0.005 of 2.55": (0.005, 2.55, 0.27, 1e-4),
+    "0.005 of 10.2": (0.005, 10.2, 0.13, 3e-3),
+}
+
+
+@pytest.mark.parametrize("name", WIDE)
+def test_patch_from_200_to_1800_waves(name):
+    """Cells as long as the layer is thick and longer; measured 7e-8, 3e-5 and 1.4e-3 (see above).
+
+    Beyond E = 2 / thickness the image leaves the near part, and with it the correction of the point rule between a cell
+    and the image below it: on cells 0.03 by 0.05 the first case moves by 1.4e-4 there, on cells half as long by 1e-9.
+    """
+    thickness, permittivity, length, limit = WIDE[name]
+    flat = Flat(length, 0.2, thickness, (0.03, 0.03))
+    stack = Stack((Layer(thickness, permittivity),), True)
+    cell = fine_cell([flat], stack, Grading(0.003, 0.015, 0.003, 5.0, (0.04, 0.06)))
+    few, many = (
+        solve_sweep(cell, [FREQUENCY], SCAN, solver=CellSolver(cell, FREQUENCY, 1e-8, splitting=e)).impedance
+        for e in (12.0, 35.0)
+    )
+    assert np.abs(few / many - 1).max() < limit
 
 
 @pytest.mark.parametrize("height", [0.12, 0.125, 0.13, 0.135, 0.14])
