@@ -260,7 +260,7 @@ def _from_above(axis: Any, cell: UnitCell) -> None:
             handles=handles,
             loc="upper center",
             bbox_to_anchor=(0.5, -0.16),
-            ncols=3,
+            ncols=3 if sum(len(mesh.names[c]) for c in used[:3]) < 24 else 2,
             frameon=False,
             fontsize=7.5,
         )
