@@ -11,7 +11,7 @@ import numpy as np
 
 from ..geometry.errors import InputError, nearest
 from .quantity import UNITS, Quantities
-from .schema import EXPECTED, MOST_ROWS, Key, Table
+from .schema import EXPECTED, MOST_ROWS, TOP, Key, Table
 
 Values = dict[str, Any]
 
@@ -42,9 +42,14 @@ def read_table(raw: object, table: Table, place: str, quantities: Quantities) ->
                 f"there is no key '{name}' here (value given: {_shown(raw[name])}).",
                 where=place,
                 allowed=", ".join(table.keys),
-                hint=nearest(name, table.keys),
+                hint=nearest(name, table.keys) or _misplaced(name),
             )
     return {name: _read_key(raw, name, key, place, quantities) for name, key in table.keys.items()}
+
+
+def _misplaced(name: str) -> str:
+    """What to do about a key of the top level that stands below a table's header."""
+    return f"'{name}' belongs above the first [table] of the file." if name in TOP.keys else ""
 
 
 def _read_key(raw: Mapping[str, object], name: str, key: Key, place: str, quantities: Quantities) -> Any:

@@ -4,19 +4,23 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
+from types import MappingProxyType
 
 import numpy as np
 from numpy.typing import NDArray
 
 from ..geometry.conductor import Conductor, Disc, Plate, Polygon, Strip, Wire
 from ..geometry.errors import InputError, nearest
+from ..geometry.lattice import Lattice
 from ..geometry.shapes import region_of, wire_points
 from ..geometry.stack import Layer, SheetImpedance, Stack
+from ..solver.ewald import choose_split
 from .fields import Values, in_words
 
 Floats = NDArray[np.float64]
 
 THICKEST = 10.0  # wavelengths: a layer beyond is taken for a half-space
+SHEET_DECAY = 7.4  # nepers
 HAIR = 1e-3  # of the thinnest layer: a conductor this close to an interface was meant to lie on it
 
 
@@ -33,6 +37,7 @@ def build_stack(layers: Sequence[Values], sheets: Sequence[Values], *, ground: b
     if not layers and not sheets:
         return None
     built: list[Layer] = []
+    taken: list[str] = []
     for number, values in enumerate(layers, start=1):
         where = _place("layer", number, values)
         if values["thickness"] > THICKEST * wavelength:
@@ -43,11 +48,21 @@ def build_stack(layers: Sequence[Values], sheets: Sequence[Values], *, ground: b
                 allowed=f"up to {THICKEST:g} wavelengths, {in_words(THICKEST * wavelength, 'length')}",
                 hint="Above the last layer, and below the first without a ground, there is air without end by itself.",
             )
-        if values["name"] and values["name"] in [layer.name for layer in built]:
-            raise InputError(f"the name '{values['name']}' is used twice.", where=where, allowed="another name")
+        _take(values["name"] or f"layer {number}", taken, where)
         built.append(_located(where, Layer, values, "thickness", "permittivity", "loss_tangent", "permeability"))
     stack = Stack(tuple(built), ground)
-    return Stack(stack.layers, ground, tuple(_sheet(values, n, stack) for n, values in enumerate(sheets, start=1)))
+    films = []
+    for number, values in enumerate(sheets, start=1):
+        _take(values["name"] or f"sheet {number}", taken, _place("sheet", number, values))
+        films.append(_sheet(values, number, stack))
+    return Stack(stack.layers, ground, tuple(films))
+
+
+def _take(name: str, taken: list[str], where: str) -> None:
+    """Names of layers and sheets tell them apart in the table of losses."""
+    if name in taken:
+        raise InputError(f"the name '{name}' is used twice.", where=where, allowed="another name")
+    taken.append(name)
 
 
 def _located(where: str, kind: type[Layer], values: Values, *keys: str) -> Layer:
@@ -77,6 +92,16 @@ def _sheet(values: Values, number: int, stack: Stack) -> SheetImpedance:
             )
         values["height"] = float(stack.interfaces[names.index(values["on"]) + 1])
         values["on"] = None
+    height, hair = values["height"], _hair(stack)
+    off = np.abs(height - stack.interfaces)
+    if hair > off.min() > 0 and float(stack.snap(height)) not in stack.interfaces:
+        raise InputError(
+            f"height = {_mm(height)} lies {in_words(float(off.min()), 'length')} off the interface at "
+            f"{in_words(float(stack.interfaces[off.argmin()]), 'length')}.",
+            where=f"{where}, key 'height'",
+            allowed=f"on the interface, or at least {in_words(hair, 'length')} off it",
+            hint="A sheet on top of a layer is best given by on = the name of the layer.",
+        )
     impedance = complex(values["resistance"], values["reactance"])
     return SheetImpedance(values["height"], impedance, values["name"])
 
@@ -90,52 +115,114 @@ def conductor_heights(conductor: Conductor) -> Floats:
     return np.zeros(0)
 
 
-def check_conductors(conductors: Sequence[Conductor], stack: Stack) -> None:
-    """Refuse conductors just off an interface, faces across one, and faces on a sheet."""
-    hair = HAIR * min((layer.thickness for layer in stack.layers), default=0.0)
-    sheets = [float(stack.snap(sheet.height)) for sheet in stack.sheets]
+def check_conductors(
+    conductors: Sequence[Conductor], stack: Stack, meshed: Mapping[str, tuple[Floats, Floats]] = MappingProxyType({})
+) -> None:
+    """Refuse conductors just off an interface or sheet, faces across one, and conductors that lie on a sheet.
+
+    `meshed`: triangles (n, 3, 3) and lines (n, 2, 3), m, of the mesh files, by name of the conductor.
+    """
     for conductor in conductors:
-        z, where = conductor_heights(conductor), f"[[conductor]] '{conductor.name}'"
-        if not len(z):
-            continue
-        if stack.ground and z.min() < -1e-9 * max(stack.top, float(np.ptp(z))):
+        for z in _pieces(conductor, meshed):
+            _check_elements(z, stack, f"[[conductor]] '{conductor.name}'", may_cross=isinstance(conductor, Wire))
+
+
+def check_sheets(
+    conductors: Sequence[Conductor],
+    stack: Stack,
+    meshed: Mapping[str, tuple[Floats, Floats]],
+    lattice: Lattice,
+    k_max: float,
+    tolerance: float,
+) -> None:
+    """Refuse conductors so close to a sheet that the Floquet waves kept do not resolve the field between the two.
+
+    The near part takes a sheet for opaque, as it is for waves of high k_t; the Floquet waves make up for the rest.
+    They do so to a few 1e-4 of the impedance where the last of them falls by `SHEET_DECAY` on its way to the sheet
+    and back (measured for sheets of 100 to 1e6 ohm, resistive and reactive).
+    """
+    heights = {c.name: _pieces(c, meshed) for c in conductors}
+    tall = any(np.ptp(z, axis=1).any() for pieces in heights.values() for z in pieces if z.size)
+    split = choose_split(lattice.area, k_max, tolerance, tall=1.0 if tall else 0.0)
+    least = SHEET_DECAY / (2 * split.far_radius)
+    for number, sheet in enumerate(stack.sheets, start=1):
+        for name, pieces in heights.items():
+            above = [np.maximum(z.min(axis=1) - sheet.height, sheet.height - z.max(axis=1)) for z in pieces if z.size]
+            gap = float(np.concatenate(above).min()) if above else np.inf
+            if gap < least:
+                told = f"is {_mm(gap)} away from" if gap > 0 else "reaches through"
+                raise InputError(
+                    f"conductor '{name}' {told} the sheet at z = {_mm(sheet.height)}.",
+                    where=_place("sheet", number, {"name": sheet.name}),
+                    allowed=f"at least {in_words(least, 'length')} between sheets and conductors on this lattice",
+                    hint="A film closer than that, or around a probe, is beyond this version.",
+                )
+
+
+def _pieces(conductor: Conductor, meshed: Mapping[str, tuple[Floats, Floats]]) -> list[Floats]:
+    """Heights (n, corners), m, of the corners of the faces, straight pieces of wire, or elements of a conductor."""
+    if conductor.name in meshed:
+        return [part[:, :, 2] for part in meshed[conductor.name]]
+    z = conductor_heights(conductor)
+    return [np.column_stack([z[:-1], z[1:]])] if isinstance(conductor, Wire) else [z[None]]
+
+
+def _check_elements(z: Floats, stack: Stack, where: str, *, may_cross: bool = False) -> None:
+    """Faces, or straight pieces of wire, (n, corners) by the heights of their corners."""
+    if not z.size:
+        return
+    if stack.ground and z.min() < -1e-9 * max(stack.top, float(np.ptp(z))):
+        raise InputError(
+            f"it reaches z = {in_words(float(z.min()), 'length')}, inside the ground.",
+            where=where,
+            allowed="heights of 0 and above: the bottom of the first layer is z = 0",
+        )
+    z, sheets = stack.snap(z), [float(stack.snap(sheet.height)) for sheet in stack.sheets]
+    low, high = z.min(axis=1), z.max(axis=1)
+    for height in sheets:
+        if np.any((low == height) & (high == height)):
             raise InputError(
-                f"it reaches z = {in_words(float(z.min()), 'length')}, inside the ground.",
+                f"it lies on the sheet at z = {in_words(height, 'length')}, and would short it.",
                 where=where,
-                allowed="heights of 0 and above: the bottom of the first layer is z = 0",
+                allowed="another height",
             )
-        off = np.abs(z[:, None] - stack.interfaces)
-        close = (off > 0) & (off < hair) & (stack.snap(z)[:, None] != stack.interfaces)
-        if close.any():
-            i, j = np.argwhere(close)[0]
+    _check_hair(z.ravel(), stack, sheets, where)
+    for height in () if may_cross else sorted({*stack.interfaces.tolist(), *sheets}):
+        if np.any(across := (low < height) & (high > height)):
+            i = int(across.argmax())
             raise InputError(
-                f"a corner at z = {float(z[i]) * 1e3:.10g} mm lies {in_words(float(off[i, j]), 'length')} off the "
-                f"interface at {in_words(float(stack.interfaces[j]), 'length')}.",
+                f"its face reaches from z = {_mm(low[i])} to {_mm(high[i])}, across the interface or sheet at "
+                f"{in_words(height, 'length')}.",
                 where=where,
-                allowed=f"on the interface, or at least {in_words(hair, 'length')} off it",
+                allowed="faces, and elements of a mesh file, within one layer",
+                hint="Split it there into two that touch; conductors of kind 'wire' may cross.",
+            )
+
+
+def _check_hair(z: Floats, stack: Stack, sheets: list[float], where: str) -> None:
+    hair = _hair(stack)
+    for height in sorted({*stack.interfaces.tolist(), *sheets}):
+        off = np.abs(z - height)
+        if np.any(close := (off > 0) & (off < hair)):
+            i = int(close.argmax())
+            raise InputError(
+                f"a corner at z = {_mm(z[i])} lies {in_words(float(off[i]), 'length')} off the "
+                f"{'interface' if height in stack.interfaces else 'sheet'} at {in_words(height, 'length')}.",
+                where=where,
+                allowed=f"on the interface, or at least {in_words(hair, 'length')} off it"
+                if height in stack.interfaces
+                else f"at least {in_words(hair, 'length')} off it",
                 hint="Heights are best given by the same parameters as the thicknesses.",
             )
-        if not isinstance(conductor, Wire):
-            _check_face(z, stack, sheets, where)
 
 
-def _check_face(z: Floats, stack: Stack, sheets: list[float], where: str) -> None:
-    low, high = float(stack.snap(z.min())), float(stack.snap(z.max()))
-    if low == high and low in sheets:
-        raise InputError(
-            f"it lies on the sheet at z = {in_words(low, 'length')}, and would short it.",
-            where=where,
-            allowed="another height",
-        )
-    inside = [b for b in (*stack.interfaces, *sheets) if low < b < high]
-    if inside:
-        raise InputError(
-            f"its face reaches from z = {in_words(low, 'length')} to {in_words(high, 'length')}, across the interface "
-            f"or sheet at {in_words(float(inside[0]), 'length')}.",
-            where=where,
-            allowed="faces within one layer",
-            hint="Split it there into two that touch; wires may cross.",
-        )
+def _hair(stack: Stack) -> float:
+    return HAIR * min((layer.thickness for layer in stack.layers), default=0.0)
+
+
+def _mm(z: float) -> str:
+    """A height with the digits that tell it from its neighbours."""
+    return f"{float(z) * 1e3:.10g} mm"
 
 
 def sized(conductors: Sequence[Conductor], rows: Sequence[Values], stack: Stack, size: float) -> tuple[Conductor, ...]:

@@ -20,7 +20,7 @@ from ..geometry.stack import Stack
 from . import build
 from .fields import Values, read_table, write_table
 from .job import Expectation, Job, ScanPlan
-from .layers import build_stack, check_conductors, sized
+from .layers import build_stack, check_conductors, check_sheets, sized
 from .quantity import SPEED_OF_LIGHT, Quantities
 from .scan_plan import build_scan_plan
 from .schema import CONDUCTORS, MOST_SOLUTIONS, MOST_TABLES, NOT_YET, REPEATED, SINGLE, STEEPEST, TOP, Table
@@ -231,9 +231,12 @@ def _draft(top: Values, single: Mapping[str, Values], repeated: Mapping[str, lis
     ]
     build.check_wire_radii(conductors, wavelength)
     stack = build_stack(repeated["layer"], repeated["sheet"], ground=top["ground"], wavelength=wavelength)
-    if stack is not None:
-        check_conductors(conductors, stack)
     meshed = build.read_mesh_shapes(conductors, 1e-6 * wavelength)
+    if stack is not None:
+        check_conductors(conductors, stack, meshed)
+        slowness = float(np.sqrt(np.abs(stack.permittivity * stack.permeability).max()))
+        k_max = 2 * np.pi * slowness / wavelength
+        check_sheets(conductors, stack, meshed, lattice, k_max, single["accuracy"]["tolerance"])
     gaps = []
     for table in ("port", "load"):
         for k, values in enumerate(repeated[table], start=1):

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from bad_case_base import HEAD, BadCase, edit
+from bad_case_base import HEAD, BadCase, edit, vtk
 
 LAYERS = """[[layer]]
 name = "base"
@@ -42,6 +42,32 @@ centre = [0, "8 mm", "3 mm"]
 size = ["2 mm", "4 mm"]
 normal = [0, 1, 0]
 """
+
+
+WIRE = """[[conductor]]
+kind = "wire"
+name = "rod"
+points = [["3 mm", "4 mm", "FROM"], ["3 mm", "8 mm", "TO"]]
+radius = "0.1 mm"
+"""
+MESHED = """[[conductor]]
+kind = "mesh"
+name = "sail"
+file = "sheet.vtk"
+unit = "1 mm"
+offset = [0, "6 mm", "HEIGHT"]
+"""
+
+
+def rod(name: str, low: str, high: str, *says: str) -> BadCase:
+    return added(name, WIRE.replace("FROM", low).replace("TO", high), *says)
+
+
+def sail(name: str, height: str, *says: str) -> BadCase:
+    """A mesh file of one square that rises by 2 mm."""
+    points = [(0, 0, 0), (2, 0, 0), (2, 2, 2), (0, 2, 2)]
+    case = added(name, MESHED.replace("HEIGHT", height), *says)
+    return BadCase(name, case.text, says, {"sheet.vtk": vtk(points)})
 
 
 def printed(name: str, old: str, new: str, *says: str) -> BadCase:
@@ -85,6 +111,22 @@ STACKS = [
     BadCase("conductor in the ground", PRINTED.replace('"3.2 mm"]\n', '"-3 mm"]\n'),
             ("[[conductor]] 'dipole'", "ground")),
     added("face across an interface", UPRIGHT, "[[conductor]] 'fin'", "across the interface or sheet at 3.2 mm"),
+    printed("sheet a hair off an interface", 'on = "foam"', 'height = "7.199 mm"', "key 'height'", "7.199 mm lies",
+            "off the interface at 7.2 mm", "on = the name of the layer"),
+    printed("sheet over the dipole", 'on = "foam"', 'height = "4.5 mm"', "[[sheet]] 'film'",
+            "conductor 'dipole' is 1.3 mm away from the sheet at z = 4.5 mm", "at least"),
+    rod("wire along a sheet", "7.2 mm", "7.2 mm", "[[conductor]] 'rod'", "it lies on the sheet at z = 7.2 mm"),
+    rod("wire through a sheet", "6 mm", "8 mm", "[[sheet]] 'film'", "conductor 'rod' reaches through the sheet"),
+    sail("mesh across an interface", "2 mm", "[[conductor]] 'sail'", "across the interface or sheet at 3.2 mm"),
+    sail("mesh a hair off an interface", "1.201 mm", "[[conductor]] 'sail'", "z = 3.201 mm", "0.001 mm off"),
+    added("two sheets of one name", '[[sheet]]\nname = "film"\nheight = "6 mm"\nresistance = "50 ohm"\n',
+          "the name 'film' is used twice", "[[sheet]]"),
+    printed("sheet named like a layer", 'name = "film"', 'name = "foam"', "the name 'foam' is used twice"),
+    printed("ground as a layer's key", "loss_tangent = 0.001", "ground = true", "[[layer]] 'base'", "no key 'ground'",
+            "above the first [table]"),
+    printed("thickness in words", BASE, 'thickness = "infinite"', "key 'thickness'", "'infinite'"),
+    printed("impedance of a sheet", 'reactance = "-200 ohm"', 'impedance = "50 ohm"', "no key 'impedance'",
+            "resistance, reactance"),
     BadCase("sheet without layers", PRINTED.replace(LAYERS, '[[sheet]]\nheight = "1 mm"\nresistance = "50 ohm"\n'),
             ("lies outside the layers",)),
 ]  # fmt: skip
