@@ -53,7 +53,7 @@ class _Walk:
     sheets: NDArray[np.bool_]
     reach: float
     grain: float
-    pending: dict[tuple[int, int, int, int], Complexes] = field(default_factory=dict)
+    pending: dict[tuple[int, int, int, int], complex] = field(default_factory=dict)
     queue: list[tuple[int, int, int, int]] = field(default_factory=list)
     path: dict[tuple[int, int, int, int], float] = field(default_factory=dict)
     story: dict[tuple[int, int, int, int], tuple[Event, ...] | None] = field(default_factory=dict)

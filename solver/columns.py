@@ -189,8 +189,10 @@ def _is_direct(ray: Ray) -> bool:
 
 def _least_distance(points: Floats, floor: float) -> float:
     """Shortest distance between two points of the cloud, m."""
-    apart = cKDTree(points).query(points, k=2)[0][:, 1] if len(points) > 1 else np.array([floor])
-    return max(float(apart.min()), floor)
+    if len(points) < 2:
+        return floor
+    distance, _ = cKDTree(points).query(points, k=2)
+    return max(float(np.asarray(distance)[:, 1].min()), floor)
 
 
 def _nodes(splitting: float, least: float) -> tuple[Floats, Floats]:

@@ -13,7 +13,7 @@ import sys
 import time
 
 import numpy as np
-from direct import K, LATTICE, least, plate_cell
+from direct import LATTICE, K, least, plate_cell
 from scanward.geometry.cell import UnitCell
 from scanward.geometry.conductor import Plate, Wire
 from scanward.geometry.mesher import mesh_conductors
