@@ -26,6 +26,9 @@ from .plot import (
     style,
 )
 from .result import Result
+from .surface_waves import near_orders, surface_waves
+
+SURFACE_ARCS = " White dotted: where a Floquet wave meets a surface wave of the bare stack, at both ends of the band."
 
 
 def scan_maps(result: Result) -> Drawing | None:
@@ -68,7 +71,7 @@ def scan_maps(result: Result) -> Drawing | None:
         "image/svg+xml",
         "Worst value over the band and the driven ports, over direction cosines. Solid red: the limit's "
         "contour. White dashed: where a grating lobe enters visible space at the top frequency. Grey circle: "
-        "edge of the scan cone.",
+        "edge of the scan cone." + (SURFACE_ARCS if surface_waves(result.job) else ""),
         "Two colour maps over u and v: worst active reflection, and worst gain shortfall.",
     )
 
@@ -102,6 +105,7 @@ def _map(figure: Any, axis: Any, result: Result, values: Floats, label: str, spa
     rim = np.sin(min(plan.cone, np.pi / 2))
     axis.plot(rim * np.cos(turn), rim * np.sin(turn), color=MUTED, linewidth=1)
     _lobe_boundaries(axis, result, rim)
+    _surface_arcs(axis, result, rim)
     reach = max(float(np.max(np.abs(plan.map_u))), rim) * 1.05
     axis.set(
         xlim=(-reach, reach),
@@ -131,6 +135,18 @@ def _lobe_boundaries(axis: Any, result: Result, rim: float) -> None:
             linestyle="--",
             linewidth=1.2,
         )
+
+
+def _surface_arcs(axis: Any, result: Result, rim: float) -> None:
+    """Arcs inside the cone on which a Floquet wave runs along a surface wave, at the two ends of the band."""
+    turn, lattice = np.linspace(0, 2 * np.pi, 1441), result.job.cell.lattice
+    for item in surface_waves(result.job):
+        k, beta = 2 * np.pi * item.frequency / LIGHT_SPEED, item.wave.beta.real
+        for order in near_orders(lattice, k, beta):
+            g = order @ lattice.reciprocal / k
+            u, v = beta * np.cos(turn) - g[0], beta * np.sin(turn) - g[1]
+            inside = np.hypot(u, v) <= rim
+            axis.plot(np.where(inside, u, np.nan), np.where(inside, v, np.nan), color="white", linestyle=":")
 
 
 def reflection_chart(result: Result) -> Drawing:

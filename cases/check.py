@@ -13,7 +13,7 @@ from .judge import AT_LEAST, TITLES, UNITS, degrees, number
 from .layers import layer_rows
 from .progress import duration
 from .report import material_text
-from .surface_waves import planes_of, wave_header, wave_rows
+from .surface_waves import planes_of, trouble, wave_header, wave_rows
 
 Rows = list[tuple[str, ...]]
 
@@ -40,6 +40,9 @@ def show_check(job: Job, console: Any) -> None:
     ):
         if rows:
             _table(console, title, header, rows)
+    told = trouble(job)
+    if told:
+        console.print(f"\n{_safe(told)}")
 
 
 def lattice_rows(job: Job) -> Rows:

@@ -34,6 +34,7 @@ from .plot import (
 from .result import Result
 
 FLOOR = -40.0
+GREYS = (INK, MUTED, "#93a0ab")  # absorbers, the greatest first
 
 
 def reflection_cuts(result: Result) -> Drawing | None:
@@ -140,10 +141,10 @@ def power_cuts(result: Result) -> Drawing | None:
             stack = [values[f, index] for _, values, _ in parts]
             axis.stackplot(
                 np.degrees(theta), stack, labels=[name for name, _, _ in parts],
-                colors=[colour for _, _, colour in parts], edgecolor="white", linewidth=0.5,
+                colors=[colour for _, _, colour in parts], edgecolor="white", linewidth=0.2,
             )  # fmt: skip
         handles, names = axes[0, 0].get_legend_handles_labels()
-        figure.legend(handles, names, loc="outside lower center", ncols=len(parts), frameon=False, fontsize=8)
+        figure.legend(handles, names, loc="outside lower center", ncols=min(len(parts), 4), frameon=False, fontsize=8)
         data = render(figure)
     return Drawing(
         "power-cuts",
@@ -233,10 +234,21 @@ def _budget(result: Result) -> list[tuple[str, Floats, str]]:
         ("radiated in the beam", response.radiated[..., main].sum(-1), HUES[0]),
         ("radiated downwards", response.radiated[..., down].sum(-1), HUES[4]),
         ("grating lobes", response.radiated[..., lobes].sum(-1), HUES[5]),
-        ("absorbed", response.absorbed.sum(-1), INK),
+        *_absorbed(result),
         ("reflected", response.reflected, ALARM),
     ]
     return [share for share in shares if share[1].max() > 1e-4]
+
+
+def _absorbed(result: Result) -> list[tuple[str, Floats, str]]:
+    """Shares of the absorbers that matter most, and of the rest together."""
+    shares, names = result.response.absorbed, result.sweep.loss_names
+    if not len(names):
+        return []
+    order = np.argsort(-shares.max(axis=(0, 1)), kind="stable")
+    parts = [(f"absorbed in {names[n]}", shares[..., n], grey) for n, grey in zip(order, GREYS, strict=False)]
+    rest = shares[..., order[len(GREYS) :]].sum(-1)
+    return [*parts, ("absorbed elsewhere", rest, FAINT)]
 
 
 def _note(axis: Any, text: str, height: float = 0.04) -> None:

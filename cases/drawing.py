@@ -24,12 +24,12 @@ from .plot import (
     render,
     style,
 )
-from .surface_waves import near_orders, surface_waves
+from .surface_waves import surface_waves
 
 LAYER = "#c9b26b"  # interfaces between layers
 SURFACE_WORDS = (
-    " On the dashed circles a Floquet wave runs along a surface wave of the bare stack (named): candidates for scan "
-    "blindness."
+    " Where the beam lies on a dashed circle a Floquet wave runs along the named surface wave of the bare stack: "
+    "candidates for scan blindness (thin where the circle stays out of visible space)."
 )
 
 
@@ -114,7 +114,7 @@ def _lobes(axis: Any, job: Job) -> None:
         textcoords="offset points",
     )
     axis.annotate(
-        f"scan cone {arc(job.scan.cone)}",
+        f"scan cone\n{arc(job.scan.cone)}",
         (0, 0),
         fontsize=7.5,
         ha="center",
@@ -154,16 +154,23 @@ def _surface_circles(axis: Any, job: Job, k: float, reach: float, rim: float) ->
     waves = [item.wave for item in surface_waves(job) if item.frequency == float(job.frequency[-1])]
     turn = np.linspace(0, 2 * np.pi, 361)
     circle, lattice = np.stack([np.cos(turn), np.sin(turn)]), job.cell.lattice
+    orders = lattice.orders_within(4.0 * k)
     for n, wave in enumerate(waves):
         beta, colour = wave.beta.real, HUES[(n + 2) % len(HUES)]
-        for order in near_orders(lattice, k, beta):
+        for order in orders[orders.any(axis=1)]:
             g = -(order @ lattice.reciprocal) / k
-            axis.plot(*(g[:, None] + beta * circle), "--", color=colour, linewidth=1.2, zorder=2)
             size = float(np.hypot(*g))
             spot = g * (1 - beta / size)  # the point of the circle nearest to broadside
-            if np.hypot(*spot) < max(rim, 0.9) and np.abs(spot).max() < reach - 0.2:
+            if np.abs(spot).max() > reach - 0.2:
+                continue
+            seen = abs(size - beta) <= 1
+            width = 1.2 if seen else 0.6
+            axis.plot(*(g[:, None] + beta * circle), "--", color=colour, linewidth=width, zorder=2)
+            away = float(np.hypot(*spot))
+            if away < (max(rim, 0.9) if seen else 1.35):
+                place = spot if seen else spot * (1 + 0.24 / away)  # clear of the edge of visible space
                 axis.annotate(
-                    wave.name, spot, fontsize=7, color=colour, ha="center", va="center", zorder=5,
+                    wave.name, place, fontsize=7, color=colour, ha="center", va="center", zorder=5,
                     bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.6, "alpha": 0.85},
                 )  # fmt: skip
 

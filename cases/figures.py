@@ -7,6 +7,7 @@ from .cuts import band, cross_polar_cuts, gain_cuts, power_cuts, reflection_cuts
 from .drawing import cell_drawing, lattice_diagram
 from .plot import Drawing
 from .result import Result
+from .stack_drawing import stack_drawing
 
 
 def draw_all(result: Result) -> tuple[Drawing, ...]:
@@ -22,5 +23,6 @@ def draw_all(result: Result) -> tuple[Drawing, ...]:
         power_cuts(result),
         lattice_diagram(result.job),
         cell_drawing(result.job.cell),
+        stack_drawing(result.job.cell),
     )
     return tuple(drawing for drawing in drawn if drawing is not None)

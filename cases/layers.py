@@ -265,5 +265,15 @@ def layer_rows(stack: Stack) -> list[tuple[str, str, str, str]]:
     return rows
 
 
+def stack_summary(stack: Stack) -> str:
+    """The layers in one line, bottom to top."""
+    rows = [
+        f"{layer.name or f'layer {i}'} {layer.thickness * 1e3:.5g} mm (permittivity {layer.permittivity:g})"
+        for i, layer in enumerate(stack.layers, start=1)
+    ]
+    films = f"; {len(stack.sheets)} {'sheet' if len(stack.sheets) == 1 else 'sheets'}" if stack.sheets else ""
+    return f"{'ground' if stack.ground else 'air'} | {' | '.join(rows)} | air{films}"
+
+
 def _place(table: str, number: int, values: Mapping[str, object]) -> str:
     return f"[[{table}]] '{values['name']}'" if values["name"] else f"[[{table}]] number {number}"

@@ -12,12 +12,13 @@ import numpy as np
 
 from ..solver.pattern import LIGHT_SPEED, decibel
 from .expect import compare
+from .job import Job
 from .judge import CLOSE, FAILED, MET, OPEN, Verdict, degrees, judge, number
-from .layers import layer_rows
+from .layers import layer_rows, stack_summary
 from .plot import Drawing, driven_ports
 from .progress import duration
 from .result import CONVENTIONS, Result
-from .surface_waves import WHY, wave_header, wave_rows
+from .surface_waves import WHY, trouble, wave_header, wave_rows, wave_summary
 
 MARKS = {MET: "met", FAILED: "failed", CLOSE: "close", OPEN: "open"}
 TABLE_ANGLES = np.radians([0, 15, 30, 45, 60, 75])
@@ -64,6 +65,8 @@ def report_text(result: Result, figures: Sequence[Drawing]) -> str:
         surface_header=wave_header(result.job),
         surface_waves=wave_rows(result.job),
         surface_why=WHY,
+        surface_trouble=trouble(result.job),
+        expected_to_fail=result.job.expected_to_fail,
         losses=_losses(result),
         ports=_ports(result),
         loads=_loads(result),
@@ -164,7 +167,16 @@ def _facts(result: Result) -> list[tuple[str, str]]:
         ("Grating lobes at the top frequency", lobes),
         ("Wanted polarisation", kind),
         ("Ground plane", "perfectly conducting at z = 0" if job.cell.ground else "none"),
+        *_stack_facts(job),
     ]
+
+
+def _stack_facts(job: Job) -> list[tuple[str, str]]:
+    if job.cell.stack is None:
+        return []
+    waves = wave_summary(job)
+    rows = [("Layers, bottom to top", stack_summary(job.cell.stack))]
+    return [*rows, ("Surface waves of the bare layers", waves)] if waves else rows
 
 
 def _accuracy(result: Result) -> dict[str, Any]:

@@ -98,8 +98,8 @@ LAYER = _table(
 
 SHEET = _table(
     "[[sheet]]",
-    "A sheet much thinner than a wavelength, given by its surface impedance, the same at all frequencies. Conductors keep "
-    "away from it (about a seventh of the lattice period; the message tells how far).",
+    "A sheet much thinner than a wavelength, given by its surface impedance, the same at all frequencies. Conductors "
+    "keep away from it (about a seventh of the lattice period; the message tells how far).",
     name=Key("text", "Name in messages and the table of losses.", default=""),
     height=Key("length", "Height above z = 0."),
     on=Key("text", "Instead of `height`: the layer on whose upper face the sheet lies."),
