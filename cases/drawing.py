@@ -141,7 +141,7 @@ def _lobes(axis: Any, job: Job) -> None:
                 xytext=(3, 3),
                 textcoords="offset points",
             )
-    _surface_circles(axis, job, k, reach, rim)
+    _surface_circles(axis, job, k, reach)
     free = lattice.grating_lobe_free_cone(k)
     axis.set(xlim=(-reach, reach), ylim=(-reach, reach), aspect="equal", xlabel="u", ylabel="v")
     axis.set_title(
@@ -149,7 +149,7 @@ def _lobes(axis: Any, job: Job) -> None:
     )
 
 
-def _surface_circles(axis: Any, job: Job, k: float, reach: float, rim: float) -> None:
+def _surface_circles(axis: Any, job: Job, k: float, reach: float) -> None:
     """Dashed circles on which the beam excites a surface wave of the bare stack through a Floquet wave."""
     waves = [item.wave for item in surface_waves(job) if item.frequency == float(job.frequency[-1])]
     turn = np.linspace(0, 2 * np.pi, 361)
@@ -167,8 +167,8 @@ def _surface_circles(axis: Any, job: Job, k: float, reach: float, rim: float) ->
             width = 1.2 if seen else 0.6
             axis.plot(*(g[:, None] + beta * circle), "--", color=colour, linewidth=width, zorder=2)
             away = float(np.hypot(*spot))
-            if away < (max(rim, 0.9) if seen else 1.35):
-                place = spot if seen else spot * (1 + 0.24 / away)  # clear of the edge of visible space
+            if away < 1.35:
+                place = spot if away < 0.8 else spot * (1 + 0.24 / away)  # clear of the edge of visible space
                 axis.annotate(
                     wave.name, place, fontsize=7, color=colour, ha="center", va="center", zorder=5,
                     bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.6, "alpha": 0.85},

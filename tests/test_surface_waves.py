@@ -104,6 +104,7 @@ def test_the_report_tells_of_layers_and_surface_waves():
     assert text.count("data:image/") == 10
     bare = report_text(sheet_result(), ())
     assert "Surface waves" not in bare and "Layer or sheet" not in bare and "expected to fail" not in bare
+    assert "takes it for granted" in text and "takes it for granted" not in bare
     failing = replace(result, job=replace(result.job, expected_to_fail=True))
     assert "its limits are expected to fail" in report_text(failing, ())
 
@@ -124,7 +125,7 @@ class Paper:
 def test_circles_are_those_of_the_directions_told():
     job = at_design_frequency("printed_dipole_blind")
     paper, k = Paper(), 2 * np.pi * 5.4e9 / LIGHT_SPEED
-    drawing._surface_circles(paper, job, k, 2.3, np.sin(job.scan.cone))
+    drawing._surface_circles(paper, job, k, 2.3)
     least = [np.hypot(x, y).min() for x, y, _ in paper.lines]
     seen = [style["linewidth"] > 1 for _, _, style in paper.lines]
     assert sum(seen) == 4 and len(seen) == 8  # the lobes beside, and those on the diagonals
