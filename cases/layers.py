@@ -58,6 +58,20 @@ def build_stack(layers: Sequence[Values], sheets: Sequence[Values], *, ground: b
     return Stack(stack.layers, ground, tuple(films))
 
 
+def refuse_endless(row: Mapping[str, object], where: str) -> None:
+    """Tell those who want a half-space that there is none but air; `row` as it stands in the file."""
+    given = row.get("thickness")
+    word = given.split()[0].lower() if isinstance(given, str) and given.split() else given
+    if word in (np.inf, "inf", "+inf", "infinite", "infinity", "half-space"):
+        raise InputError(
+            f"thickness = {given} makes the layer a half-space.",
+            where=f"{where}, key 'thickness'",
+            allowed='a length such as "3.2 mm"',
+            hint="Above the last layer lies air without end by itself, below the first one the ground or air; layers "
+            "cannot follow a half-space.",
+        )
+
+
 def _take(name: str, taken: list[str], where: str) -> None:
     """Names of layers and sheets tell them apart in the table of losses."""
     if name in taken:

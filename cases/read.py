@@ -20,7 +20,7 @@ from ..geometry.stack import Stack
 from . import build
 from .fields import Values, read_table, write_table
 from .job import Expectation, Job, ScanPlan
-from .layers import build_stack, check_conductors, check_sheets, sized
+from .layers import build_stack, check_conductors, check_sheets, refuse_endless, sized
 from .quantity import SPEED_OF_LIGHT, Quantities
 from .scan_plan import build_scan_plan
 from .schema import CONDUCTORS, MOST_SOLUTIONS, MOST_TABLES, NOT_YET, REPEATED, SINGLE, STEEPEST, TOP, Table
@@ -167,6 +167,8 @@ def _repeated(raw: Mapping[str, object], name: str, quantities: Quantities) -> l
         table = REPEATED[name]
         if not isinstance(table, Table):
             table = _conductor_table(row, place)
+        if name == "layer":
+            refuse_endless(row, place)
         out.append(read_table(row, table, place, quantities))
     return out
 
