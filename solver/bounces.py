@@ -30,6 +30,7 @@ class Bounce:
     Attributes
     ----------
     amplitude : of ``exp(-k_t distance) / (2 k_t)``
+    second : (b, c) of the next order, ``exp(-k_t distance) / (2 k_t) k^2 (b / k_t^2 + c / k_t)``; zero unless asked for
     distance : vertical path, m, for the two heights that were traced
     launched, arriving : +1 upwards, -1 downwards; both 0 for the direct ray within one section. Moving the observer
         up by d makes the path ``arriving d`` longer, moving the source ``-launched d``.
@@ -42,6 +43,38 @@ class Bounce:
     launched: int
     arriving: int
     events: tuple[Event, ...] | None
+    second: tuple[complex, complex] = (0j, 0j)
+
+
+@dataclass(frozen=True)
+class SecondOrder:
+    """How a line departs from its static limit, to the order k^2 / k_t^2 (or k^2 d / k_t along a path d).
+
+    Attributes
+    ----------
+    source : of the source's own impedance, relative, by section
+    reflection : (n_section, n_section) added to the reflection from one section into the next
+    permittivity : (n_section,) eps mu, which bends the decay along a path: ``eps d / 2``
+    """
+
+    source: Complexes
+    reflection: Complexes
+    permittivity: Complexes
+
+
+Order = tuple[complex, complex, complex]  # amplitude, b, c
+
+
+def _times(order: Order, factor: complex, bend: complex = 0.0) -> Order:
+    """The order after a factor ``factor + bend k^2 / k_t^2``."""
+    a, b, c = order
+    return a * factor, b * factor + a * bend, c * factor
+
+
+def _carried(order: Order, curvature: complex, distance: float) -> Order:
+    """The order after a path in a medium."""
+    a, b, c = order
+    return a, b, c + 0.5 * curvature * distance * a
 
 
 @dataclass
@@ -53,23 +86,25 @@ class _Walk:
     sheets: NDArray[np.bool_]
     reach: float
     grain: float
-    pending: dict[tuple[int, int, int, int], complex] = field(default_factory=dict)
+    second: SecondOrder | None = None
+    pending: dict[tuple[int, int, int, int], Order] = field(default_factory=dict)
     queue: list[tuple[int, int, int, int]] = field(default_factory=list)
     path: dict[tuple[int, int, int, int], float] = field(default_factory=dict)
     story: dict[tuple[int, int, int, int], tuple[Event, ...] | None] = field(default_factory=dict)
 
-    def launch(self, amplitude: complex, distance: float, section: int, direction: int, launched: int, story) -> None:
-        if amplitude == 0 or distance > self.reach:
+    def launch(self, order: Order, distance: float, section: int, direction: int, launched: int, story) -> None:
+        if not any(order) or distance > self.reach:
             return
         key = (round(distance / self.grain), section, direction, launched)
         if key not in self.pending:
             heapq.heappush(self.queue, key)
-            self.pending[key], self.path[key], self.story[key] = 0j, distance, story
+            self.pending[key], self.path[key], self.story[key] = (0j, 0j, 0j), distance, story
         elif self.story[key] != story:
             self.story[key] = None
-        self.pending[key] += amplitude
+        a, b, c = self.pending[key]
+        self.pending[key] = (a + order[0], b + order[1], c + order[2])
 
-    def arrive(self, amplitude: complex, direction: int, section: int, distance: float, launched: int, story) -> None:
+    def arrive(self, order: Order, direction: int, section: int, distance: float, launched: int, story) -> None:
         """Reflect and transmit a ray at the end of its section."""
         beyond = section + direction
         if not np.isfinite(distance):
@@ -79,15 +114,20 @@ class _Walk:
             return None if story is None else (*story, event)
 
         if beyond < 0:
-            self.launch(self.mirror * amplitude, distance, section, -direction, launched, told((-1, section)))
+            self.launch(_times(order, self.mirror), distance, section, -direction, launched, told((-1, section)))
             return
         if self.sheets[section + 1 if direction > 0 else section]:
-            self.launch(self.mirror * amplitude, distance, section, -direction, launched, told((section, section)))
+            self.launch(_times(order, self.mirror), distance, section, -direction, launched, told((section, section)))
             return
         one, other = self.impedance[section], self.impedance[beyond]
         reflected = (other - one) / (other + one)
-        self.launch(reflected * amplitude, distance, section, -direction, launched, told((section, section)))
-        self.launch((1 + reflected) * amplitude, distance, beyond, direction, launched, told((section, beyond)))
+        bend = 0.0 if self.second is None else self.second.reflection[section, beyond]
+        back, on = _times(order, reflected, bend), _times(order, 1 + reflected, bend)
+        self.launch(back, distance, section, -direction, launched, told((section, section)))
+        self.launch(on, distance, beyond, direction, launched, told((section, beyond)))
+
+    def curvature(self, section: int) -> complex:
+        return 0.0 if self.second is None else complex(self.second.permittivity[section])
 
 
 def trace(
@@ -102,6 +142,7 @@ def trace(
     *,
     antisymmetric: bool = False,
     where: tuple[int | None, int | None] = (None, None),
+    second: SecondOrder | None = None,
 ) -> list[Bounce]:
     """Every ray from a unit source to an observer, no longer than `reach`.
 
@@ -116,6 +157,7 @@ def trace(
     antisymmetric : the source is a series voltage, whose waves are +1 upwards and -1 downwards; else both are
         the impedance of its section
     where : sections of observer and source; default the one above a height on an interface
+    second : carry the next order in k / k_t too
 
     Raises
     ------
@@ -128,28 +170,34 @@ def trace(
         int(np.searchsorted(lows, height, side="right")) - 1 if given is None else given
         for height, given in zip((z, source), where, strict=True)
     )
-    walk = _Walk(impedance, mirror, sheets, reach, 1e-9 * max(stack.top, abs(z - source), 1e-300))
+    walk = _Walk(impedance, mirror, sheets, reach, 1e-9 * max(stack.top, abs(z - source), 1e-300), second)
     unit = 1.0 + 0j if antisymmetric else complex(impedance[start])
+    first: Order = (unit, 0j if second is None else unit * complex(second.source[start]), 0j)
     found = []
     if receiver == start and not antisymmetric:
-        found.append(Bounce(unit, abs(z - source), 0, 0, ()))
+        a, b, c = _carried(first, walk.curvature(start), abs(z - source))
+        found.append(Bounce(a, abs(z - source), 0, 0, (), (b, c)))
     for direction in (1, -1):
-        first = unit * direction if antisymmetric else unit
         away = abs((highs if direction > 0 else lows)[start] - source)
-        walk.arrive(first, direction, start, away, direction, ())
+        begin = _times(first, direction) if antisymmetric else first
+        if np.isfinite(away):
+            walk.arrive(_carried(begin, walk.curvature(start), away), direction, start, away, direction, ())
     count = 0
     while walk.queue:
         key = heapq.heappop(walk.queue)
-        amplitude, distance, story = walk.pending.pop(key), walk.path.pop(key), walk.story.pop(key)
+        order, distance, story = walk.pending.pop(key), walk.path.pop(key), walk.story.pop(key)
         _, section, direction, launched = key
-        if abs(amplitude) < smallest * abs(unit):
+        if max(abs(order[0]), abs(order[1])) < smallest * abs(unit):
             continue
         count += 1
         if count > MAX_RAYS:
             raise ValueError(f"more than {MAX_RAYS} images within {reach:g} m; lower d_max or raise smallest")
         origin = lows[section] if direction > 0 else highs[section]
         if section == receiver and distance + abs(z - origin) <= reach:
-            found.append(Bounce(complex(amplitude), distance + abs(z - origin), launched, direction, story))
-        onward = distance + highs[section] - lows[section]
-        walk.arrive(complex(amplitude), direction, section, onward, launched, story)
+            a, b, c = _carried(order, walk.curvature(section), abs(z - origin))
+            found.append(Bounce(complex(a), distance + abs(z - origin), launched, direction, story, (b, c)))
+        length = highs[section] - lows[section]
+        if np.isfinite(length):
+            order = _carried(order, walk.curvature(section), length)
+            walk.arrive(order, direction, section, distance + length, launched, story)
     return found

@@ -24,17 +24,15 @@ from scipy import sparse
 from scipy.spatial import cKDTree
 from scipy.special import erfc
 
-from . import quadrature
 from .cloud import Cloud
 from .ewald import Split
-from .rays import CrossRay, Ray, real_if_real
+from .logarithmic import log_nodes, log_profile
+from .rays import CrossRay, Ray, at_heights, log_powers, real_if_real
 from .zones import Zoning
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-NODES = 10  # Gauss nodes for every factor e^2 of t: 1e-9 of the kernel (tested)
-BEYOND = 14.0  # t ends at this over the least distance in the cloud; images may be somewhat nearer
 GROUP_COST = 2000  # handling a group costs what so many pairs of points cost, each with one ray
 
 
@@ -74,8 +72,8 @@ class ColumnSums:
         self.charge = sparse.csr_matrix(cloud.charge.T)
         self.current = [sparse.csr_matrix(m.T) for m in cloud.current]
         grain = 1e-9 * max(float(np.ptp(cloud.points, axis=0).max()), 1e-30)
-        self.t, self.weights = _nodes(split.splitting, _least_distance(cloud.points, 1e3 * grain))
-        numbers = [x for ray in rays for x in (ray.current, ray.charge, ray.kappa_current, ray.kappa_charge)]
+        self.t, self.weights = log_nodes(split.splitting, _least_distance(cloud.points, 1e3 * grain))
+        numbers = [x for ray in rays for x in ray.numbers]
         numbers += [x for ray in cross for x in (ray.amplitude, ray.kappa)]
         self.kind = np.result_type(real_if_real(np.array(numbers)))
         tall = [i for i, zone in enumerate(zoning.zones) if not zone.is_level]
@@ -133,14 +131,16 @@ class ColumnSums:
             np.array([1 / (4.0**i * factorial(i)) for i in p])[:, None] * self.t ** (-2.0 * p[:, None]) * self.weights
         )
         for ray in rays:
-            bell = np.exp(-np.multiply.outer((z - ray.height(sources)) ** 2, self.t**2)) * scale
-            of_current, of_charge = ray.powers(self.split.powers)
-            if ray.current:
-                part = (of_current[:, None] * fall)[:, None, :] * bell
-                a += part
-                v += -part if ray.mirrored else part
-            if ray.charge:
-                q += (of_charge[:, None] * fall)[:, None, :] * bell
+            d = z - ray.height(sources)
+            bell = np.exp(-np.multiply.outer(d**2, self.t**2)) * scale
+            logs = log_profile(self.t, self.weights, np.abs(d), self.split.powers) if ray.has_logs else None
+            for target, (amplitude, kappa, log) in zip((a, v, q), ray.terms(), strict=True):
+                if amplitude:
+                    target += (real_if_real(amplitude * kappa**p)[:, None] * fall)[:, None, :] * bell
+                if any(log) and logs is not None:
+                    target += at_heights(log, z, sources)[:, None] * (
+                        log_powers(kappa, self.split.powers)[:, None, None] * logs
+                    )
         return {"a": a, "v": v, "q": q}
 
     def _crossed(self, z: float, sources: Floats, rays: Sequence[CrossRay]) -> NDArray:
@@ -193,16 +193,6 @@ def _least_distance(points: Floats, floor: float) -> float:
         return floor
     distance, _ = cKDTree(points).query(points, k=2)
     return max(float(np.asarray(distance)[:, 1].min()), floor)
-
-
-def _nodes(splitting: float, least: float) -> tuple[Floats, Floats]:
-    """Nodes t and weights dt of an integral over t from E to where nothing is left."""
-    low, high = np.log(splitting), np.log(max(BEYOND / least, 20 * splitting))
-    x, w = quadrature.gauss(NODES)
-    edges = np.linspace(low, high, int(np.ceil((high - low) / 2)) + 1)
-    width = np.diff(edges)[:, None]
-    t = np.exp(edges[:-1, None] + width * x).ravel()
-    return t, (width * w).ravel() * t
 
 
 def _groups(keys: Floats) -> list[Ints]:

@@ -17,9 +17,10 @@ from .cloud import Cloud
 from .columns import ColumnSums
 from .corrections import Cell, build_corrections
 from .ewald import Split, near_kernels
+from .logarithmic import log_nodes, log_profile
 from .pairs import half_cells
 from .radial import RadialTable
-from .rays import CrossRay, Ray
+from .rays import CrossRay, Ray, at_heights, log_powers, real_if_real
 from .threads import thread_count
 from .zones import Zoning
 
@@ -62,7 +63,7 @@ def build_near(
     tiles = _tiles_by_zone(cloud.points, zone)
     upright = cross is not None and not all(z.is_level for z in zoning.zones)
     by_columns = ColumnSums(cloud, zoning, split, rays, cross or []) if upright else None
-    kind = np.result_type(*(w for ray in rays for w in ray.powers(split.powers)))
+    kind = np.result_type(real_if_real(np.array([x for ray in rays for x in ray.numbers])))
     by_points = _PointKernels(zoning, split, rays if by_columns is None else by_columns.left, kind)
     with ThreadPoolExecutor(thread_count()) as pool:  # the array operations inside release the interpreter lock
         corrections = pool.submit(build_corrections, basis, lattice, rays, zoning)
@@ -164,6 +165,12 @@ class _PointKernels:
         self.direct_only = rays == [Ray()]
         self.tables: dict[tuple[int, int], RadialTable] = {}
         self.single: dict[tuple[int, int], list[Ray]] = defaultdict(list)
+        self.levels = {
+            (o, s)
+            for o, one in enumerate(zoning.zones)
+            for s, other in enumerate(zoning.zones)
+            if one.is_level and other.is_level
+        }
         tabulated: dict[tuple[int, int], list[tuple[Ray, float]]] = defaultdict(list)
         for ray in rays:
             if ray.pair is None:
@@ -212,10 +219,30 @@ class _PointKernels:
         of_current, of_charge = ray.powers(self.split.powers)
         if ray.current:
             current += of_current[:, None] * kernel
-            if vertical.base is not current.base:
-                vertical += (-of_current if ray.mirrored else of_current)[:, None] * kernel
+        if ray.vertical and vertical.base is not current.base:
+            vertical += ray.vertical_powers(self.split.powers)[:, None] * kernel
         if ray.charge:
             charge += of_charge[:, None] * kernel
+        if ray.has_logs:
+            self._add_logs(ray, observers, sources, targets)
+
+    def _add_logs(self, ray: Ray, observers: Floats, sources: Floats, targets: tuple[NDArray, ...]) -> None:
+        """The logarithmic parts of a ray, node by node; `sources` as the observers see them."""
+        square = ((sources[:, None, :2] - observers[:, :2]) ** 2).sum(axis=2)
+        d = np.abs(sources[:, 2, None] - observers[:, 2])
+        true = (ray.lift - sources[:, 2, None]) * (1.0 if ray.mirrored else -1.0)
+        weights = [
+            (target, at_heights(log, observers[:, 2], true), log_powers(kappa, self.split.powers))
+            for target, (_, kappa, log) in zip(targets, ray.terms(), strict=True)
+            if any(log)
+        ]
+        least = max(float(np.sqrt((square + d * d).min())), 1e-3 * self.split.near_radius)
+        for t, weight in zip(*log_nodes(self.split.splitting, least), strict=True):
+            share = log_profile(np.array([t]), np.array([weight]), d, self.split.powers)[..., 0] * np.exp(
+                -square * t * t
+            )
+            for target, linear, powers in weights:
+                target += (powers[:, None, None] * (linear * share)).transpose(1, 0, 2)
 
 
 def _kernel(observers: Floats, sources: Floats, split: Split) -> Floats:

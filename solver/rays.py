@@ -8,14 +8,13 @@ far part, which knows the exact kernel, so their choice changes the number of Fl
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from ..geometry.stack import Stack
-from .bounces import Bounce, trace
+from .bounces import Bounce, SecondOrder, trace
 from .layered_kernel import interface_terms
 from .lines import sections
 from .static_images import quasi_static_images
@@ -24,6 +23,11 @@ from .zones import Zone, Zoning
 Floats = NDArray[np.float64]
 MIRROR = np.array([1.0, 1.0, -1.0])
 SMALLEST = 1e-6  # weaker rays are left to the far part
+LARGEST_KAPPA = 20.0  # a ray that would need a larger one is written as two
+
+
+Linear = tuple[complex, complex, complex]  # c0 + c1 z + c2 z'
+NOTHING: Linear = (0.0, 0.0, 0.0)
 
 
 @dataclass(frozen=True)
@@ -37,6 +41,9 @@ class Ray:
     pair : (observer, source) zones it belongs to; None: all
     current, charge : amplitudes of 1/(4 pi R) for currents and charges
     kappa_current, kappa_charge : effective ``k^2`` in units of the free-space one
+    vertical, kappa_vertical : the same for vertical currents of stacks, whose sign in the mirror is counted here
+    current_log, vertical_log, charge_log : further amplitudes of ``k^2 exp(-g d) / (2 g^2)``, 1/m: (c0, c1, c2) of
+        ``c0 + c1 z + c2 z'`` with the heights of observer and source
     """
 
     mirrored: bool = False
@@ -46,6 +53,11 @@ class Ray:
     charge: complex = 1.0
     kappa_current: complex = 1.0
     kappa_charge: complex = 1.0
+    vertical: complex = 0.0
+    kappa_vertical: complex = 1.0
+    current_log: Linear = NOTHING
+    vertical_log: Linear = NOTHING
+    charge_log: Linear = NOTHING
 
     def place(self, points: Floats, shift: Floats) -> Floats:
         """Source points (..., 3) as the observer sees them, displaced by a lattice vector (3,)."""
@@ -56,9 +68,42 @@ class Ray:
         p = np.arange(count)
         return real_if_real(self.current * self.kappa_current**p), real_if_real(self.charge * self.kappa_charge**p)
 
+    def vertical_powers(self, count: int) -> NDArray:
+        """The same for vertical currents of a stack."""
+        return real_if_real(self.vertical * self.kappa_vertical ** np.arange(count))
+
     def height(self, source: NDArray) -> NDArray:
         """Apparent height of sources at the given heights, m."""
         return (-source if self.mirrored else source) + self.lift
+
+    def terms(self) -> tuple[tuple[complex, complex, Linear], ...]:
+        """(amplitude, kappa, logarithmic amplitudes) of horizontal currents, vertical currents and charges."""
+        return (
+            (self.current, self.kappa_current, self.current_log),
+            (self.vertical, self.kappa_vertical, self.vertical_log),
+            (self.charge, self.kappa_charge, self.charge_log),
+        )
+
+    @property
+    def has_logs(self) -> bool:
+        """Whether any of the logarithmic amplitudes is there."""
+        return any(any(log) for _, _, log in self.terms())
+
+    @property
+    def numbers(self) -> list[complex]:
+        """Everything that may be complex."""
+        return [x for amplitude, kappa, log in self.terms() for x in (amplitude, kappa, *log)]
+
+
+def log_powers(kappa: complex, count: int) -> NDArray:
+    """kappa^(p-1) for p = 0..count-1, 0 at p = 0: a logarithmic ray starts at k^2."""
+    p = np.arange(count)
+    return real_if_real(np.where(p > 0, np.asarray(kappa, dtype=complex) ** np.maximum(p - 1, 0), 0.0))
+
+
+def at_heights(log: Linear, z: NDArray | float, source: NDArray) -> NDArray:
+    """``c0 + c1 z + c2 z'``, real where it is."""
+    return real_if_real(np.asarray(log[0] + log[1] * z + log[2] * source))
 
 
 @dataclass(frozen=True)
@@ -90,14 +135,14 @@ def air_rays(ground: bool) -> list[Ray]:
 def layered_rays(stack: Stack, zoning: Zoning, reach: float) -> tuple[list[Ray], list[CrossRay]]:
     """Rays between the zones of a cell, none longer than `reach` vertically (m) for all heights in them.
 
-    Close to an interface kappa is the one that cancels the second term of the large-k_t expansion
-    (`layered_kernel.interface_terms`); elsewhere the mean permittivity at both ends does.
+    Without magnetic layers every ray is right to the second order in k / k_t (`_Pair`); otherwise kappa is the mean
+    permittivity at both ends, and the one of `layered_kernel.interface_terms` along an interface.
     """
     rays: list[Ray] = []
     cross: list[CrossRay] = []
     for o, observer in enumerate(zoning.zones):
         for s, source in enumerate(zoning.zones):
-            if observer.is_level and source.is_level:
+            if observer.is_level and source.is_level and np.any(stack.permeability != 1):
                 rays += _level_rays(stack, (o, s), observer.low, source.low, reach)
                 continue
             rays += _Pair(stack, observer, source, reach).rays((o, s))
@@ -124,8 +169,37 @@ def _level_rays(stack: Stack, pair: tuple[int, int], z: float, source: float, re
     return rays
 
 
+@dataclass
+class _Sum:
+    """Rays from one place: ``exp(-k_t d)/(2 k_t) [a + k^2 (b / k_t^2 + (c0 + c1 (z - z0) + c2 (z' - z0')) / k_t)]``."""
+
+    a: complex = 0j
+    b: complex = 0j
+    c0: complex = 0j
+    c1: complex = 0j
+    c2: complex = 0j
+
+    @property
+    def parts(self) -> list[tuple[complex, complex]]:
+        """(amplitude, kappa) of the rays ``exp(-g d)/(2 g)`` with the same a and b: their kappas sum to 2 b."""
+        if abs(self.a) < 1e-12 and abs(self.b) < 1e-12:
+            return []
+        if abs(self.b) <= LARGEST_KAPPA * abs(self.a):
+            return [(self.a, 2 * self.b / self.a)]
+        return [(2 * self.b - self.a, 2.0), (2 * self.a - 2 * self.b, 1.0)]
+
+
 class _Pair:
-    """Traces rays between two zones, at least one of which has an extent in z."""
+    """Traces rays between two zones to the second order in k / k_t.
+
+    With ``g_i = k_t - eps_i k^2 / 2 k_t`` a path gathers ``eps_i d_i / 2`` over its lengths, and every interface bends
+    its reflection,
+
+        Gamma_TM = Gamma (1 + eps1 eps2 / (eps1 + eps2) k^2 / k_t^2),   Gamma_TE = (eps2 - eps1) / 4  k^2 / k_t^2
+
+    from 1 to 2 (voltages; currents -Gamma). K_Q has the TM voltage to both orders and the TE voltage in the second, K_v
+    the TE and the TM current likewise.
+    """
 
     def __init__(self, stack: Stack, observer: Zone, source: Zone, reach: float):
         self.stack, self.observer, self.source, self.reach = stack, observer, source, reach
@@ -133,6 +207,7 @@ class _Pair:
         self.eps = np.array([complex(s.permittivity) for s in self.parts])
         self.mu = np.array([complex(s.permeability) for s in self.parts])
         self.shorts = np.array([s.shunt != 0 for s in self.parts])
+        self.exact = bool(np.all(self.mu == 1))
         self.sections = self._side(observer, source), self._side(source, observer)
         self.z = 0.5 * (observer.low + observer.high)
         self.z_source = 0.5 * (source.low + source.high)
@@ -142,58 +217,102 @@ class _Pair:
         below = zone.is_level and zone.low == self.parts[zone.section].low and other.section < zone.section
         return zone.section - 1 if below else zone.section
 
-    def _trace(self, charges: bool, antisymmetric: bool = False) -> list[Bounce]:
-        """Rays of the TM voltage (charges) or of the TE voltage (currents)."""
-        impedance, sheets = (1 / self.eps, self.shorts) if charges else (self.mu, np.zeros_like(self.shorts))
+    def _trace(self, line: str, second: SecondOrder | None = None, *, antisymmetric: bool = False) -> list[Bounce]:
+        """Rays of a line: "TM voltage", "TE voltage", "TM current" or "TE current"."""
+        impedance = {
+            "TM voltage": 1 / self.eps,
+            "TE voltage": self.mu,
+            "TM current": self.eps,
+            "TE current": 1 / self.mu,
+        }
+        mirror = -1.0 if line.endswith("voltage") else 1.0
+        sheets = self.shorts if line.startswith("TM") else np.zeros_like(self.shorts)
         room = self.observer.high - self.observer.low + self.source.high - self.source.low
         return trace(
-            self.stack, self.z, self.z_source, impedance, -1.0, sheets, self.reach + room, SMALLEST,
-            antisymmetric=antisymmetric, where=self.sections,
+            self.stack, self.z, self.z_source, impedance[line], mirror, sheets, self.reach + room, SMALLEST,
+            antisymmetric=antisymmetric, where=self.sections, second=second if self.exact else None,
         )  # fmt: skip
 
     def rays(self, pair: tuple[int, int]) -> list[Ray]:
-        """Currents and charges; rays from one place are one."""
-        currents = self._merged(self._trace(False), self._kappa_a)
-        charges = self._merged(self._trace(True), self._kappa_q)
-        none = (0.0, 1.0)
+        """Currents and charges; rays from one place are one (or two with different kappas)."""
+        one, two = self.eps[:, None], self.eps
+        with_te = 0.25 * (two - one)
+        tm = SecondOrder(-0.5 * self.eps, (one - two) / (one + two) * one * two / (one + two), self.eps)
+        te_voltage = SecondOrder(0.5 * self.eps, with_te, self.eps)
+        te_current = SecondOrder(-0.5 * self.eps, -with_te, self.eps)
+        a = self._summed(self._trace("TE voltage", te_voltage))
+        v = self._summed(self._trace("TE current", te_current), self._trace("TM current"))
+        q = self._summed(self._trace("TM voltage", tm), self._trace("TE voltage"))
         found = []
-        for key in {**charges, **currents}:
-            (current, kappa_current), (charge, kappa_charge) = currents.get(key, none), charges.get(key, none)
-            found.append(Ray(*key, pair, current, charge, kappa_current, kappa_charge))
+        for key in {**q, **a, **v}:
+            sums = [kind.get(key, _Sum()) for kind in (a, v, q)]
+            logs = [self._log(key, total) for total in sums]
+            parts = [total.parts for total in sums]
+            for n in range(max(len(part) for part in parts)):
+                (c, kc), (w, kw), (d, kd) = (part[n] if n < len(part) else (0.0, 1.0) for part in parts)
+                ray = Ray(*key, pair, c, d, kc, kd, w, kw)
+                found.append(ray if n else replace(ray, current_log=logs[0], vertical_log=logs[1], charge_log=logs[2]))
         return found
 
     def cross_rays(self, pair: tuple[int, int]) -> list[CrossRay]:
         """K_c: the TM less the TE voltage of a series source."""
-        tm = self._merged(self._trace(True, True), self._kappa_c)
-        te = self._merged(self._trace(False, True), self._kappa_c)
-        mu, found = complex(self.mu[self.sections[1]]), []
-        for key in {**tm, **te}:
-            amplitude = tm.get(key, (0.0, 1.0))[0] - te.get(key, (0.0, 1.0))[0]
-            if abs(amplitude) > SMALLEST:
-                kappa = tm.get(key) or te[key]
-                found.append(CrossRay(*key, pair, mu * amplitude, kappa[1]))
-        return found
-
-    def _merged(
-        self, bounces: list[Bounce], kappa: Callable[[Bounce], complex]
-    ) -> dict[tuple[bool, float], tuple[complex, complex]]:
-        """(mirrored, lift) -> (amplitude, kappa); kappa is weighted by the amplitudes."""
         sums: dict[tuple[bool, float], list[complex]] = {}
-        for bounce in bounces:
-            mirrored, lift = self._image(bounce)
-            if self._nearest(mirrored, lift) > self.reach:
+        mu = complex(self.mu[self.sections[1]])
+        for line, sign in (("TM voltage", mu), ("TE voltage", -mu)):
+            for bounce in self._trace(line, antisymmetric=True):
+                key = self._image(bounce)
+                if self._nearest(*key) <= self.reach:
+                    total = sums.setdefault(key, [0j, 0j])
+                    total[0] += sign * bounce.amplitude
+                    total[1] += sign * bounce.amplitude * self._kappa_c(bounce)
+        return [CrossRay(*key, pair, a, ak / a) for key, (a, ak) in sums.items() if abs(a) > SMALLEST]
+
+    def _summed(self, first: list[Bounce], second: list[Bounce] | None = None) -> dict[tuple[bool, float], _Sum]:
+        """(mirrored, lift) -> orders; `second` : rays whose amplitude belongs to the second order."""
+        sums: dict[tuple[bool, float], _Sum] = {}
+        for bounce in first:
+            key = self._image(bounce)
+            if self._nearest(*key) > self.reach:
                 continue
-            total = sums.setdefault((mirrored, lift), [0j, 0j])
-            total[0] += bounce.amplitude
-            total[1] += bounce.amplitude * kappa(bounce)
-        return {key: (a, ak / a) for key, (a, ak) in sums.items() if abs(a) > 1e-12}
+            total = sums.setdefault(key, _Sum())
+            total.a += bounce.amplitude
+            b, c = bounce.second if self.exact else (0.5 * self._mean() * bounce.amplitude, 0j)
+            total.b += b
+            total.c0 += c if self.exact else total.b * bounce.distance
+            upwards = float(np.sign(self.z - self.z_source) or 1.0) if bounce.launched == 0 else 0.0
+            half = 0.5 * bounce.amplitude
+            total.c1 += half * self.eps[self.sections[0]] * (bounce.arriving or upwards)
+            total.c2 -= half * self.eps[self.sections[1]] * (bounce.launched or upwards)
+        for bounce in second or []:
+            key = self._image(bounce)
+            if self.exact and self._nearest(*key) <= self.reach:
+                sums.setdefault(key, _Sum()).b += bounce.amplitude
+        return sums
+
+    def _log(self, key: tuple[bool, float], total: _Sum) -> Linear:
+        """Amplitudes of ``k^2 exp(-g d)/(2 g^2)``: what ``c - b d`` leaves, linear in both heights."""
+        mirrored, lift = key
+        if not self.exact:
+            return NOTHING
+        image = (-self.z_source if mirrored else self.z_source) + lift
+        side = np.sign(self.z - image) or 1.0
+        d = abs(self.z - image)
+        c1 = 0.0 if self.observer.is_level else total.c1 - total.b * side
+        c2 = 0.0 if self.source.is_level else total.c2 + total.b * side * (-1 if mirrored else 1)
+        c0 = total.c0 - total.b * d - c1 * self.z - c2 * self.z_source
+        scale = 1e-9 * max(abs(total.a), abs(total.b), 1e-30)
+        extent = max(self.stack.top, self.observer.high, self.source.high)
+        return NOTHING if max(abs(c0) / extent, abs(c1), abs(c2)) < scale else (c0, c1, c2)
 
     def _image(self, bounce: Bounce) -> tuple[bool, float]:
         """Where the source seems to be: mirrored or not, and how far displaced.
 
-        With a level on either side the two directions there are the same; then the image is not mirrored.
+        With a level on either side the two directions there are the same; then the image is not mirrored. Between two
+        levels only the distance counts: the image is then below.
         """
         launched, arriving, d = bounce.launched, bounce.arriving, bounce.distance
+        if self.observer.is_level and self.source.is_level:
+            launched = arriving = 1
         if launched == 0:
             return False, 0.0
         if self.observer.is_level:
@@ -230,19 +349,6 @@ class _Pair:
     def _mean(self) -> complex:
         regions = list(self.sections)
         return complex(np.mean(self.eps[regions] * self.mu[regions]))
-
-    def _kappa_a(self, bounce: Bounce) -> complex:
-        media = self._media(bounce)
-        return self._mean() if media is None else complex(0.5 * (media[0] + media[1]) if media[2] else media[0])
-
-    def _kappa_q(self, bounce: Bounce) -> complex:
-        media = self._media(bounce)
-        if media is None:
-            return self._mean()
-        here, there, passed = media
-        if here == there:
-            return complex(here)
-        return complex(2 * here * there / (here + there) - (0.0 if passed else here))
 
     def _kappa_c(self, bounce: Bounce) -> complex:
         """From ``(Gamma_TM - Gamma_TE) / k_t^2`` on an interface, to the second order in k / k_t."""

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from scipy.special import erfc
 
 from . import quadrature
-from .rays import CrossRay, Ray, real_if_real
+from .rays import CrossRay, Ray, at_heights, real_if_real
 
 Floats = NDArray[np.float64]
 
@@ -47,27 +47,22 @@ class Nodes:
     def currents(self, k: float, z: Floats, source: Floats, rays: Sequence[Ray]) -> tuple[NDArray, NDArray, NDArray]:
         """Factors of horizontal currents, vertical currents and charges, each (n_node, n_z, n_source).
 
-        In the mirror vertical currents keep their sign where horizontal ones and charges change it.
+        Logarithmic amplitudes are counted.
         """
-        shape = (len(self.t), len(z), len(source))
-        kind = np.result_type(
-            *(real_if_real(np.array([r.current, r.charge, r.kappa_current, r.kappa_charge])) for r in rays)
-        )
-        a, v, q = (np.zeros(shape, kind) for _ in range(3))
-        scale = self.weights / (2 * np.sqrt(np.pi))
+        kind = np.result_type(real_if_real(np.array([x for ray in rays for x in ray.numbers] or [0.0])))
+        results = [np.zeros((len(self.t), len(z), len(source)), kind) for _ in range(3)]
+        scale, log_scale = self.weights / (2 * np.sqrt(np.pi)), k * k * self.weights / (4 * self.t)
         for ray in rays:
             d = np.abs(z[:, None] - ray.height(source))
             bell = np.exp(-np.multiply.outer(self.t**2, d**2))
-            if ray.current:
-                part = (real_if_real(np.asarray(ray.current)) * scale * self._medium(k, ray.kappa_current))[
-                    :, None, None
-                ]
-                a += part * bell
-                v += (-part if ray.mirrored else part) * bell
-            if ray.charge:
-                part = real_if_real(np.asarray(ray.charge)) * scale * self._medium(k, ray.kappa_charge)
-                q += part[:, None, None] * bell
-        return a, v, q
+            tail = erfc(np.multiply.outer(self.t, d)) if ray.has_logs else None
+            for target, (amplitude, kappa, log) in zip(results, ray.terms(), strict=True):
+                medium = self._medium(k, kappa)
+                if amplitude:
+                    target += (real_if_real(np.asarray(amplitude)) * scale * medium)[:, None, None] * bell
+                if any(log):
+                    target += at_heights(log, z[:, None], source) * ((log_scale * medium)[:, None, None] * tail)
+        return results[0], results[1], results[2]
 
     def crossed(self, k: float, z: Floats, source: Floats, rays: Sequence[CrossRay]) -> NDArray:
         """Factors of K_c from vertical currents at `source` to charges at z, (n_node, n_z, n_source), m."""
