@@ -55,7 +55,7 @@ class Nodes:
         for ray in rays:
             d = np.abs(z[:, None] - ray.height(source))
             bell = np.exp(-np.multiply.outer(self.t**2, d**2))
-            tail = erfc(np.multiply.outer(self.t, d)) if ray.has_logs else None
+            tail = erfc(np.multiply.outer(self.t, d)) if ray.has_logs else np.zeros(0)
             for target, (amplitude, kappa, log) in zip(results, ray.terms(), strict=True):
                 medium = self._medium(k, kappa)
                 if amplitude:
