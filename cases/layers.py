@@ -15,12 +15,12 @@ from ..geometry.lattice import Lattice
 from ..geometry.shapes import region_of, wire_points
 from ..geometry.stack import Layer, SheetImpedance, Stack
 from ..solver.ewald import choose_split
+from ..solver.rays import SHEET_DECAY
 from .fields import Values, in_words
 
 Floats = NDArray[np.float64]
 
 THICKEST = 10.0  # wavelengths: a layer beyond is taken for a half-space
-SHEET_DECAY = 7.4  # nepers
 HAIR = 1e-3  # of the thinnest layer: a conductor this close to an interface was meant to lie on it
 
 

@@ -17,7 +17,7 @@ from .ewald import choose_split
 from .far import FarPart, choose_layers, tall_fraction
 from .layered_far import LayeredFarPart
 from .near import build_near
-from .rays import air_rays, layered_rays
+from .rays import air_rays, check_sheets, layered_rays
 from .zones import divide_zones
 
 Floats = NDArray[np.float64]
@@ -55,6 +55,7 @@ class PeriodicOperator:
             rays = air_rays(cell.ground)
             self.far = FarPart(self.cloud, self.lattice, self.split, layers, cell.ground)
         else:
+            check_sheets(stack, zoning, self.split.far_radius)
             rays, cross = layered_rays(stack, zoning, RAY_REACH / self.split.splitting)
             self.far = LayeredFarPart(self.cloud, self.lattice, self.split, stack, rays, cross, layers)
         self.near = build_near(self.basis, self.cloud, self.lattice, self.split, rays, zoning, cross)

@@ -13,6 +13,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from ..geometry.errors import InputError
 from ..geometry.stack import Stack
 from .bounces import Bounce, SecondOrder, trace
 from .layered_kernel import interface_terms
@@ -23,6 +24,7 @@ from .zones import Zone, Zoning
 Floats = NDArray[np.float64]
 MIRROR = np.array([1.0, 1.0, -1.0])
 SMALLEST = 1e-6  # weaker rays are left to the far part
+SHEET_DECAY = 7.4  # nepers
 LARGEST_KAPPA = 20.0  # a ray that would need a larger one is written as two
 
 
@@ -149,6 +151,27 @@ def layered_rays(stack: Stack, zoning: Zoning, reach: float) -> tuple[list[Ray],
             if not source.is_level:
                 cross += _Pair(stack, observer, source, reach).cross_rays((o, s))
     return rays, cross
+
+
+def check_sheets(stack: Stack, zoning: Zoning, far_radius: float) -> None:
+    """Refuse conductors too close to a sheet of finite impedance.
+
+    Rays take a sheet for opaque, which it is only for waves of high k_t; the Floquet waves up to `far_radius` (rad/m)
+    make up for it where the last of them falls by `SHEET_DECAY` on its way there and back (measured: 3e-4 of Z then).
+
+    Raises
+    ------
+    InputError
+    """
+    least = SHEET_DECAY / (2 * far_radius)
+    for sheet in stack.sheets:
+        gap = min(max(zone.low - sheet.height, sheet.height - zone.high) for zone in zoning.zones)
+        if gap < least:
+            raise InputError(
+                f"a conductor comes within {max(gap, 0.0):.4g} m of the sheet at z = {sheet.height:g} m.",
+                where=f"[[sheet]] '{sheet.name}'" if sheet.name else "[[sheet]]",
+                allowed=f"at least {least:.4g} m on this lattice",
+            )
 
 
 def _level_rays(stack: Stack, pair: tuple[int, int], z: float, source: float, reach: float) -> list[Ray]:

@@ -26,17 +26,17 @@ radius = "0.2 mm"
 
 @pytest.fixture(scope="module")
 def job():
-    return parse_case(PRINTED + PROBE)
+    return parse_case(PRINTED.replace('thickness = "4 mm"', 'thickness = "8 mm"') + PROBE)  # film clear of the probe
 
 
 def test_stack_is_what_the_file_says(job):
     stack = job.cell.stack
     assert stack.ground and job.cell.ground
-    np.testing.assert_allclose(stack.interfaces, [0, 3.2e-3, 7.2e-3])
+    np.testing.assert_allclose(stack.interfaces, [0, 3.2e-3, 11.2e-3])
     assert [layer.name for layer in stack.layers] == ["base", "foam"]
     assert stack.permittivity[1] == pytest.approx(2.2 * (1 - 0.001j))
     (film,) = stack.sheets
-    assert (film.height, film.impedance) == (pytest.approx(7.2e-3), -200j)
+    assert (film.height, film.impedance) == (pytest.approx(11.2e-3), -200j)
 
 
 def test_stack_goes_with_every_mesh_and_the_resolved_text(job):
