@@ -86,6 +86,7 @@ class Job:
     co_polar : "x" or "y" (Ludwig 3 reference axis at `co_polar_angle` from x), "right" or "left" (circular, IEEE)
     co_polar_angle : rad, direction of the co-polar reference axis from x for linear polarisation
     expect : numbers of the `[expect]` table
+    reduced_error : wanted error of a reduced model's active reflection; None: direct solution of every point
     expected_to_fail : whether the case is a ready-made one that shows a failure
     element_size : target edge length of the mesh, m
     remesh : callable(factor) -> UnitCell with element size multiplied by `factor` (for the error estimate)
@@ -105,3 +106,4 @@ class Job:
     remesh: object
     expect: tuple[Expectation, ...] = field(default_factory=tuple)
     expected_to_fail: bool = False
+    reduced_error: float | None = None

@@ -12,6 +12,7 @@ import numpy as np
 
 from .. import __version__
 from ..solver.result import FloquetWaves, ScanPoints, Sweep
+from ..solver.snapshots import Snapshots
 from .job import Job
 
 CODE_FOLDERS = ("geometry", "solver")
@@ -45,12 +46,15 @@ class PartialRun:
 
     def save(self, index: int, sweep: Sweep) -> None:
         """Keep the sweep of frequency `index`; complete or not there."""
+        self._write(self.path(index), _arrays(sweep))
+
+    def _write(self, path: Path, arrays: dict[str, np.ndarray]) -> None:
         self.folder.mkdir(parents=True, exist_ok=True)
-        temporary = self.folder / f".{self.key}-{index:04d}-{os.getpid()}.part"
+        temporary = self.folder / f".{path.stem}-{os.getpid()}.part"
         try:
             with temporary.open("wb") as stream:
-                np.savez(stream, allow_pickle=False, **_arrays(sweep))
-            os.replace(temporary, self.path(index))
+                np.savez(stream, allow_pickle=False, **arrays)
+            os.replace(temporary, path)
         finally:
             temporary.unlink(missing_ok=True)
 
@@ -62,17 +66,30 @@ class PartialRun:
         except (OSError, ValueError, KeyError, EOFError, zipfile.BadZipFile):
             return None
 
+    def save_snapshots(self, snapshots: Snapshots) -> None:
+        """Keep the snapshots of a reduced model; complete or not there."""
+        self._write(self.folder / f"{self.key}-snapshots.npz", snapshots.arrays())
+
+    def load_snapshots(self) -> Snapshots | None:
+        """The kept snapshots of this very case, or None."""
+        try:
+            with np.load(self.folder / f"{self.key}-snapshots.npz", allow_pickle=False) as stored:
+                return Snapshots.from_arrays(dict(stored))
+        except (OSError, ValueError, KeyError, EOFError, zipfile.BadZipFile):
+            return None
+
     def count(self) -> int:
         """Number of kept frequencies of this very case."""
-        return len(list(self.folder.glob(f"{self.key}-*.npz")))
+        return len(list(self.folder.glob(f"{self.key}-[0-9][0-9][0-9][0-9].npz")))
 
     def clear(self) -> None:
         """Remove the kept frequencies of this case, and of older versions of it, and the folder if then
         empty."""
         if not self.folder.is_dir():
             return
-        for file in self.folder.glob("*-[0-9][0-9][0-9][0-9].npz"):
-            file.unlink(missing_ok=True)
+        for pattern in ("*-[0-9][0-9][0-9][0-9].npz", "*-snapshots.npz"):
+            for file in self.folder.glob(pattern):
+                file.unlink(missing_ok=True)
         if not any(self.folder.iterdir()):
             self.folder.rmdir()
 

@@ -109,6 +109,7 @@ def parse_case(text: str, *, path: Path | None = None, overrides: Mapping[str, s
         remesh=draft.cell,
         expect=expect,
         expected_to_fail=top["expected_verdict"] == "failed",
+        reduced_error=single["accuracy"]["reduced_error"] if single["accuracy"]["solver"] == "reduced" else None,
     )
 
 

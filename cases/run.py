@@ -20,6 +20,7 @@ from .job import Job
 from .judge import Verdict, judge
 from .partial import PartialRun, join_frequencies
 from .progress import Progress, Silent
+from .reduced_engine import ReducedEngine, certificate_note, reduced_factory
 from .report import write_report
 from .result import Accuracy, Provenance, Result, peak_memory, versions
 from .store import save_result
@@ -66,10 +67,11 @@ def run_case(
     told: Progress = progress if progress is not None else Silent()
     with told:
         try:
-            solver = _Lazy(job, engine)
-            sweep = solve_frequencies(job, solver, kept, told)
+            own = reduced_factory(job, kept, told.say) if job.reduced_error and engine is DirectEngine else engine
+            solver = _Lazy(job, own)
+            sweep, shortfall = _certified(solver, solve_frequencies(job, solver, kept, told))
             result = Result(job, sweep, Accuracy(), Provenance(versions()))
-            failure = check_sweep(job, sweep, result)
+            failure = check_sweep(job, sweep, result) or shortfall
             estimate = _estimate(result, solver, told, engine) if refine and not failure else _none(failure)
         except KeyboardInterrupt:
             return _interrupted(job, kept)
@@ -98,6 +100,17 @@ def solve_frequencies(job: Job, solver: _Lazy, kept: PartialRun, told: Progress)
         parts.append(part)
         told.advance((f + 1) * points)
     return join_frequencies(parts)
+
+
+def _certified(solver: _Lazy, sweep: Sweep) -> tuple[Sweep, str]:
+    """The sweep with the certificate of a reduced model among its notes, and why that model cannot be trusted."""
+    if not isinstance(solver.engine, ReducedEngine):
+        return sweep, ""
+    solver.engine.build()
+    certificate = solver.engine.certificate
+    assert certificate is not None
+    sweep = replace(sweep, notes=(*sweep.notes, certificate_note(certificate)))
+    return sweep, "" if certificate.reached else f"the reduced model did not reach its accuracy: {certificate}"
 
 
 def check_sweep(job: Job, sweep: Sweep, result: Result) -> str:
