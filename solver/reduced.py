@@ -26,6 +26,7 @@ Complexes = NDArray[np.complex128]
 Ints = NDArray[np.int64]
 
 BATCH_BYTES = 6e7
+REMEMBERED = 4  # wavenumbers whose lag sums are kept
 
 
 @dataclass(frozen=True)
@@ -88,6 +89,7 @@ class ReducedModel:
     ):  # fmt: skip
         self.view, self.band, self.vectors, self.ends = view, band, vectors, ends
         self.exact, self.near, self.rest = exact, near, rest
+        self._lag_sums: dict[float, LagSum] = {}
         self.cell = view.cell
         self.reference = np.array([port.resistance for port in self.cell.ports], dtype=float)
         self.ports, self.loads = GapForms(view.ports, vectors), GapForms(view.loads, vectors)
@@ -151,7 +153,14 @@ class ReducedModel:
         return LagSum(self.view.lattice, cells, np.tensordot(node_weights(*self.band, len(nodes), k), nodes, 1))(kt)
 
     def _lag_sum(self, k: float) -> LagSum:
-        """Near part and rest at k."""
+        """Near part and rest at k; the last few are remembered."""
+        if k not in self._lag_sums:
+            while len(self._lag_sums) >= REMEMBERED:
+                self._lag_sums.pop(next(iter(self._lag_sums)))
+            self._lag_sums[k] = self._new_lag_sum(k)
+        return self._lag_sums[k]
+
+    def _new_lag_sum(self, k: float) -> LagSum:
         cells, nodes = self.rest
         rest = np.tensordot(node_weights(*self.band, len(nodes), k), nodes, 1)
         return LagSum(self.view.lattice, *merge([self.near.cells, cells], [self.near.at(k), rest]))
