@@ -7,6 +7,7 @@ import sys
 from dataclasses import dataclass, field
 from functools import cached_property
 from importlib import metadata
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,7 +15,12 @@ from numpy.typing import NDArray
 from .. import __version__
 from ..solver.pattern import Response, co_cross, decibel, respond
 from ..solver.result import Sweep
+from ..solver.survey import Survey
 from .job import Job
+
+if TYPE_CHECKING:
+    from ..solver.greedy import Certificate
+    from ..solver.reduced import ReducedModel
 
 Floats = NDArray[np.float64]
 
@@ -67,14 +73,33 @@ class Provenance:
 
 @dataclass(frozen=True)
 class Result:
-    """All that figures, report and exports need. `failure`: why the computation cannot be trusted, or
-    empty."""
+    """All that figures, report and exports need.
+
+    Attributes
+    ----------
+    failure : why the computation cannot be trusted, or empty
+    certificate : of the reduced model; None where every point was solved directly, as are
+    survey : what was found over the whole scan volume, and
+    stored : the reduced model, or its arrays as read from a file; `model` makes one of them
+    """
 
     job: Job
     sweep: Sweep
     accuracy: Accuracy
     provenance: Provenance
     failure: str = ""
+    certificate: Certificate | None = None
+    survey: Survey | None = None
+    stored: ReducedModel | dict[str, NDArray] | None = None
+
+    @cached_property
+    def model(self) -> ReducedModel | None:
+        """The reduced model, which answers any frequency of the band and any direction; None after a direct run."""
+        if isinstance(self.stored, dict):
+            from ..solver.reduced import ReducedModel
+
+            return ReducedModel.from_arrays(self.job.cell, self.stored)
+        return self.stored
 
     @cached_property
     def response(self) -> Response:

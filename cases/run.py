@@ -23,6 +23,7 @@ from .progress import Progress, Silent
 from .reduced_engine import ReducedEngine, certificate_note, reduced_factory
 from .report import write_report
 from .result import Accuracy, Provenance, Result, peak_memory, versions
+from .scan_survey import survey_job
 from .store import save_result
 
 MET, MISSED, BAD_INPUT, NOT_REACHED, CRASHED, INTERRUPTED = 0, 1, 2, 3, 70, 130
@@ -69,9 +70,9 @@ def run_case(
         try:
             own = reduced_factory(job, kept, told.say) if job.reduced_error and engine is DirectEngine else engine
             solver = _Lazy(job, own)
-            sweep, shortfall = _certified(solver, solve_frequencies(job, solver, kept, told))
-            result = Result(job, sweep, Accuracy(), Provenance(versions()))
-            failure = check_sweep(job, sweep, result) or shortfall
+            sweep = solve_frequencies(job, solver, kept, told)
+            result, shortfall = _surveyed(Result(job, sweep, Accuracy(), Provenance(versions())), solver, told)
+            failure = check_sweep(job, result.sweep, result) or shortfall
             estimate = _estimate(result, solver, told, engine) if refine and not failure else _none(failure)
         except KeyboardInterrupt:
             return _interrupted(job, kept)
@@ -102,15 +103,18 @@ def solve_frequencies(job: Job, solver: _Lazy, kept: PartialRun, told: Progress)
     return join_frequencies(parts)
 
 
-def _certified(solver: _Lazy, sweep: Sweep) -> tuple[Sweep, str]:
-    """The sweep with the certificate of a reduced model among its notes, and why that model cannot be trusted."""
+def _surveyed(result: Result, solver: _Lazy, told: Progress) -> tuple[Result, str]:
+    """The result with reduced model, certificate and survey of the scan volume where there is such a model, and why
+    that model cannot be trusted."""
     if not isinstance(solver.engine, ReducedEngine):
-        return sweep, ""
-    solver.engine.build()
+        return result, ""
+    model = solver.engine.build()
     certificate = solver.engine.certificate
     assert certificate is not None
-    sweep = replace(sweep, notes=(*sweep.notes, certificate_note(certificate)))
-    return sweep, "" if certificate.reached else f"the reduced model did not reach its accuracy: {certificate}"
+    sweep = replace(result.sweep, notes=(*result.sweep.notes, certificate_note(certificate)))
+    survey = survey_job(result.job, model, certificate.stated, told)
+    result = replace(result, sweep=sweep, certificate=certificate, survey=survey, stored=model)
+    return result, "" if certificate.reached else f"the reduced model did not reach its accuracy: {certificate}"
 
 
 def check_sweep(job: Job, sweep: Sweep, result: Result) -> str:

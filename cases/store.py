@@ -20,6 +20,7 @@ from ..geometry.mesh import Mesh
 from ..solver.result import FloquetWaves, ScanPoints, Sweep
 from .job import Job, ScanPlan
 from .layout import FORMAT, join, to_dataset
+from .model_store import to_groups, with_groups
 from .record import read_record
 from .result import Accuracy, Provenance, Result
 
@@ -33,6 +34,8 @@ def save_result(path: Path, result: Result) -> None:
     temporary = path.with_name(f".{path.name}.{os.getpid()}")
     try:
         to_dataset(result).to_netcdf(temporary, engine="h5netcdf")
+        for name, group in to_groups(result).items():
+            group.to_netcdf(temporary, engine="h5netcdf", group=name, mode="a")
         os.replace(temporary, path)
     finally:
         temporary.unlink(missing_ok=True)
@@ -57,7 +60,7 @@ def load_result(path: Path) -> Result:
     given = data.attrs.get("scanward_format")
     if given != FORMAT:
         raise InputError(f"result format {given} is not known here.", where=str(path), allowed=f"format {FORMAT}")
-    return from_dataset(data)
+    return with_groups(from_dataset(data), path)
 
 
 def from_dataset(data: xarray.Dataset) -> Result:

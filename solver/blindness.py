@@ -29,7 +29,7 @@ SAME_POWER = 2e-3
 NEAR_HORIZON = 0.9
 AXIS = 1e-3  # v below which a direction counts as in the plane of u
 FULL = 0.995  # share of a single port's power that is not driven higher over frequency
-STEEP = 0.9998  # directions beyond are the horizon's
+STEEP = 0.9996  # directions beyond are the horizon's
 NARROW = 0.05  # imaginary part of a root in frequency, over the step between frequencies, that starts a search
 ROOT_DIRECTIONS = 0.25  # spacing of the directions (cosines) where roots in frequency are sought
 OFFSETS = np.concatenate([1e-5 * 2.0 ** np.arange(16), [1.0]])  # rad, where a peak's width is bracketed
@@ -151,8 +151,10 @@ def _one_rises(active: ActiveModel, frequency: float, uv: Floats, column: int, p
     return bool(_rises_to_horizon(active, frequency, uv[None], np.array([column]), np.array([power]))[0])
 
 
-def _alike(a: Cause, b: Cause) -> bool:
-    return (a.kind, a.wave, a.order) == (b.kind, b.wave, b.order)
+def _alike(a: Cause, b: Cause, *, opposite: bool = False) -> bool:
+    """Whether two causes are the same, or, seen from opposite directions, would be."""
+    orders = (b.order, (-b.order[0], -b.order[1])) if opposite else (b.order,)
+    return (a.kind, a.wave) == (b.kind, b.wave) and a.order in orders
 
 
 def _near(uv: Floats, members: list[Floats]) -> bool:
