@@ -9,6 +9,7 @@ from importlib import import_module
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
+    from .cases.ask import ask
     from .cases.library import find_case, ready_made
     from .cases.read import parse_case, read_case
     from .cases.run import run_case
@@ -23,6 +24,7 @@ __version__ = "0.1.0"
 _HOME = {
     "InputError": "geometry.errors",
     "ScanPoints": "solver.result",
+    "ask": "cases.ask",
     "find_case": "cases.library",
     "load_result": "cases.store",
     "parse_case": "cases.read",
@@ -38,6 +40,7 @@ __all__ = [
     "InputError",
     "ScanPoints",
     "__version__",
+    "ask",
     "find_case",
     "load_result",
     "parse_case",

@@ -1,4 +1,4 @@
-"""The command line: check a case, run it, remake a report, list the ready-made cases.
+"""The command line: check a case, run it, ask a result, remake a report, list the ready-made cases.
 
 Exit codes: 0 all limits met; 1 a limit not met or not judged; 2 bad input; 3 the computation did not reach
 its tolerance or ran out of memory; 70 a fault of the program; 130 interrupted by Ctrl-C (finished work is
@@ -147,6 +147,41 @@ def report(result: str, out: str | None) -> int:
     return outcome.code
 
 
+@cli.command("ask")
+@click.argument("result", type=click.Path(), metavar="RESULT")
+@click.option(
+    "--at", "places", multiple=True, required=True, metavar="PLACE",
+    help='Where: "FREQUENCY, THETA, PHI", e.g. "5.42 GHz, 37.5 deg, 90 deg"; may be given many times.',
+)  # fmt: skip
+@click.option("--port", help="Only this port; default: every driven one.")
+@click.option("--csv", "table", type=click.Path(dir_okay=False), help='Write a table instead; "-" for the screen.')
+def ask_result(result: str, places: tuple[str, ...], port: str | None, table: str | None) -> int:
+    """Tell impedance, reflection and gain at any frequency of the band and any direction, without solving again.
+
+    RESULT is the file result.nc of a run (or its folder). The answers come from the reduced model kept in it.
+    """
+    import csv
+    import io
+
+    from .ask import answer_table, answer_text, answers
+    from .currents import parse_place
+    from .store import load_result
+
+    asked = [parse_place(text, "--at") for text in places]
+    path = Path(result)
+    rows = answers(load_result(path / "result.nc" if path.is_dir() else path), asked, port)
+    if table is None:
+        click.echo("\n".join(answer_text(row) for row in rows))
+        return 0
+    text = io.StringIO()
+    csv.writer(text, lineterminator="\n").writerows(answer_table(rows))
+    if table == "-":
+        click.echo(text.getvalue(), nl=False)
+    else:
+        _writable(lambda: Path(table).write_text(text.getvalue(), encoding="utf-8"), Path(table))
+    return 0
+
+
 @cli.command("cases")
 def list_cases() -> int:
     """List the ready-made cases that come with the program."""
@@ -250,6 +285,8 @@ def _show_outcome(outcome: Outcome, files: list[Path]) -> None:
                    f"impedance +/- {100 * accuracy.impedance:.1f} %")  # fmt: skip
     else:
         click.echo(f"estimated error: none made ({accuracy.note})")
+    if outcome.result.certificate is not None:
+        click.echo(f"reduced model: {outcome.result.certificate}")
     for path in files:
         if path.suffix in (".nc", ".html", ".vtu") or path.name == "index.csv":
             click.echo(f"  {path}")

@@ -14,7 +14,7 @@ from .touchstone import file_name
 from .vtk import write_currents
 
 
-def parse_place(text: str) -> tuple[float, float, float]:
+def parse_place(text: str, where: str = "--currents") -> tuple[float, float, float]:
     """Frequency (Hz), theta and phi (rad) from "5.4 GHz, 30 deg, 0 deg".
 
     Raises
@@ -24,7 +24,7 @@ def parse_place(text: str) -> tuple[float, float, float]:
     """
     from .quantity import Quantities
 
-    where, allowed = "--currents", 'frequency, theta, phi such as "5.4 GHz, 30 deg, 0 deg"'
+    allowed = 'frequency, theta, phi such as "5.4 GHz, 30 deg, 0 deg"'
     parts = [part.strip() for part in text.split(",")]
     if len(parts) != 3:
         raise InputError(f"'{text}' has {len(parts)} parts.", where=where, allowed=allowed)

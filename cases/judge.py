@@ -12,6 +12,7 @@ from ..solver.pattern import Response, axial_ratio, co_cross, decibel
 from ..solver.result import ScanPoints
 from .job import Job, Limit
 from .result import Result
+from .survey_levels import Spot, worst_surveyed
 
 Floats = NDArray[np.float64]
 
@@ -36,6 +37,8 @@ TITLES = {
 AMPLITUDES = ("reflection", "cross_polar", "grating_lobe")
 """Quantities whose error is carried as a linear amplitude, because a deep null in dB has no bounded error."""
 AT_LEAST = ("efficiency",)
+SAME_LEVEL = 1e-6
+"""A survey's value must be worse by more than this to be told instead of that of a scan point."""
 BROADSIDE = np.radians(0.1)
 
 
@@ -141,21 +144,30 @@ def _verdict(limit: Limit, result: Result) -> Verdict:
     at_least = limit.quantity in AT_LEAST
     place = np.argmin(values) if at_least else np.argmax(values)
     f, s, p = np.unravel_index(place, values.shape)
-    worst = float(values[f, s, p])
-    margin = worst - limit.value if at_least else limit.value - worst
-    state, error = _state(limit, worst, margin, result.accuracy.errors.get(limit.quantity, np.nan))
+    i, port = inside[s], ports[p] if limit.quantity == "reflection" else None
+    spot = Spot(float(values[f, s, p]), float(job.frequency[f]), float(scan.u[i]), float(scan.v[i]), port)
+    points = len(inside) * len(job.frequency)
+    theta, phi = float(scan.theta[i]), float(scan.phi[i])
+    surveyed = worst_surveyed(limit, job, result.survey, ports)
+    if surveyed is not None:
+        points += surveyed.points
+        if surveyed.worst.value > spot.value + SAME_LEVEL:
+            spot = surveyed.worst
+            theta, phi = float(np.arcsin(np.hypot(spot.u, spot.v))), float(np.arctan2(spot.v, spot.u))
+    margin = spot.value - limit.value if at_least else limit.value - spot.value
+    state, error = _state(limit, spot.value, margin, result.accuracy.errors.get(limit.quantity, np.nan))
     return Verdict(
         limit=limit,
         state=state,
         holds=bool(margin >= 0),
-        worst=worst,
+        worst=spot.value,
         margin=margin,
         error=error,
-        theta=float(scan.theta[inside[s]]),
-        phi=float(scan.phi[inside[s]]),
-        frequency=float(job.frequency[f]),
-        port=job.cell.ports[ports[p]].name if limit.quantity == "reflection" else None,
-        points=len(inside) * len(job.frequency),
+        theta=theta,
+        phi=phi,
+        frequency=spot.frequency,
+        port=None if spot.port is None else job.cell.ports[spot.port].name,
+        points=points,
     )
 
 

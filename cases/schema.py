@@ -247,9 +247,9 @@ ACCURACY = _table(
     "[accuracy]",
     "How exactly the periodic sums are carried out, and how the points are solved.",
     tolerance=Key("ratio", "Relative accuracy of the sums.", default=1e-6, low=1e-12, high=1e-2),
-    solver=Key("choice", "direct: every point by a full solution; reduced: from a model made of few full solutions, "
-               "with a certified error; pays from a few hundred points on.",
-               choices=("direct", "reduced"), default="direct"),
+    solver=Key("choice", "reduced: from a model made of few full solutions, with a certified error, which also surveys "
+               "the whole scan volume; direct: every point by a full solution, and nothing between the points.",
+               choices=("reduced", "direct"), default="reduced"),
     reduced_error=Key("ratio", "Wanted error of the active reflection of the reduced model.", default=1e-4, low=1e-8,
                       high=1e-2),
 )  # fmt: skip

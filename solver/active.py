@@ -46,8 +46,10 @@ class ActiveModel:
 
     def reflection(self, frequency: float, uv: Floats) -> Complexes:
         """Active reflection (n, n_port) at direction cosines (n, 2); NaN at ports that are not driven."""
-        k = wavenumber(frequency)
-        return self._active(self.model.solve(k, k * np.asarray(uv, dtype=float)).scattering)
+        k, uv = wavenumber(frequency), np.asarray(uv, dtype=float)
+        if not len(uv):
+            return np.zeros((0, len(self.drive)), dtype=complex)
+        return self._active(self.model.solve(k, k * uv).scattering)
 
     def power(self, frequency: float, uv: Floats) -> Floats:
         """Share of its own available power that comes back into each driven port, (n, n_driven)."""

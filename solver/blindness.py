@@ -27,6 +27,7 @@ LINK = 0.2  # direction cosines by which a peak may move from one frequency to t
 NEIGHBOURS = 0.3  # maxima of a resonance within this distance are one crest
 SAME_POWER = 2e-3
 NEAR_HORIZON = 0.9
+LOW_ELEVATION = 0.996  # beyond (85 deg) every element returns nearly all; only what meets a circle is looked at
 AXIS = 1e-3  # v below which a direction counts as in the plane of u
 FULL = 0.995  # share of a single port's power that is not driven higher over frequency
 STEEP = 0.9996  # directions beyond are the horizon's
@@ -92,9 +93,11 @@ def _at_one(
     if len(active.drive) == 1:  # opposite directions are alike
         uv, column, high = np.concatenate([uv, -uv]), np.tile(column, 2), np.tile(high, 2)
     listed = (high >= 0.9 * BLIND) | (np.hypot(*uv.T) <= np.sin(cone))
+    meetings = [nearest_meeting(active, frequency, place) for place in uv]
+    listed &= np.array([m[0] != "resonance" for m in meetings], dtype=bool) | (np.hypot(*uv.T) < LOW_ELEVATION)
     crests: list[tuple[int, tuple[str, str, tuple[int, int]], list[Floats]]] = []
-    for place, port in zip(uv[listed], column[listed], strict=True):
-        met = nearest_meeting(active, frequency, place)
+    for i in np.flatnonzero(listed):
+        place, port, met = uv[i], column[i], meetings[i]
         for own_port, own, members in crests:
             if own_port == port and own == met and (met[0] != "resonance" or _near(place, members)):
                 members.append(place)
@@ -105,6 +108,8 @@ def _at_one(
     for port, _, members in crests:
         one = _crest_point(active, frequency, port, np.array(members), planes)
         radius = np.inf if one is None else float(np.hypot(*one.uv))
+        if one and one.cause.kind == "resonance" and radius > LOW_ELEVATION:
+            continue
         if one and radius < STEEP and (one.power >= BLIND or (one.power >= HALF and radius <= np.sin(cone))):
             found.append(one)
     return _without_opposites(active, _one_per_cause(found))

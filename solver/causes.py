@@ -42,7 +42,8 @@ def find_cause(active: ActiveModel, frequency: float, uv: Floats) -> Cause:
     q = quality(active.model, k, k * uv)
     best: tuple[float, Cause] | None = None
     for i in np.flatnonzero((found.share > LEAST_SHARE) & found.orders.any(axis=1)):
-        order, index, share = tuple(int(x) for x in found.orders[i]), float(found.index[i]), float(found.share[i])
+        order = int(found.orders[i, 0]), int(found.orders[i, 1])
+        index, share = float(found.index[i]), float(found.share[i])
         for wave in stack_waves(active.model.view.stack, k):
             beta, tm = float(np.real(wave.beta)), wave.polarisation == "TM"
             carried = found.along[i] if tm else 1 - found.along[i]

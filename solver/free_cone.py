@@ -70,14 +70,20 @@ def first_angles(active: ActiveModel, frequency: float, azimuth: Floats, level: 
     Looked at in steps of THETA_STEP, in steps of FINE_STEP where the level is nearly reached, and closely about every
     circle on which a Floquet wave grazes or meets a surface wave.
     """
-    coarse = np.append(np.arange(0.0, HORIZON, THETA_STEP), HORIZON)
-    theta = np.concatenate([np.tile(coarse, (len(azimuth), 1)), _beside_circles(active, frequency, azimuth)], axis=1)
-    theta = np.sort(theta, axis=1)
+    if len(active.drive) == 1:  # opposite directions are alike
+        half = np.unique(np.round(azimuth % np.pi, 9))
+        angles = _first_angles(active, frequency, half, level)
+        return angles[np.searchsorted(half, np.round(azimuth % np.pi, 9))]
+    return _first_angles(active, frequency, azimuth, level)
+
+
+def _first_angles(active: ActiveModel, frequency: float, azimuth: Floats, level: float) -> Floats:
+    theta = np.tile(np.append(np.arange(0.0, HORIZON, THETA_STEP), HORIZON), (len(azimuth), 1))
     worst = _worst(active, frequency, azimuth, theta)
-    fine = _closer(theta, worst, level)
-    if fine.shape[1]:
-        theta = np.concatenate([theta, fine], axis=1)
-        worst = np.concatenate([worst, _worst(active, frequency, azimuth, fine)], axis=1)
+    for more in (_beside_circles, _closer):
+        added = _padded(more(active, frequency, azimuth, theta, worst, level))
+        theta = np.concatenate([theta, added], axis=1)
+        worst = np.concatenate([worst, _worst(active, frequency, azimuth, added)], axis=1)
         order = np.argsort(theta, axis=1, kind="stable")
         theta, worst = np.take_along_axis(theta, order, 1), np.take_along_axis(worst, order, 1)
     over = worst > level
@@ -106,21 +112,28 @@ def _bisected(
     return low
 
 
-def _closer(theta: Floats, worst: Floats, level: float) -> Floats:
-    """Further angles (n, m) where a closer look is worth it, padded with the horizon."""
+def _closer(
+    active: ActiveModel, frequency: float, azimuth: Floats, theta: Floats, worst: Floats, level: float
+) -> list[Floats]:
+    """Further angles along every ray where the level is nearly reached, up to where it is first passed."""
     before = np.cumsum(worst > level, axis=1)[:, :-1] == 0
     near = (np.maximum(worst[:, :-1], worst[:, 1:]) > NEARLY * level) & before & (np.diff(theta, axis=1) > FINE_STEP)
-    lists = [
-        np.concatenate([np.arange(theta[n, i], theta[n, i + 1], FINE_STEP)[1:] for i in np.flatnonzero(near[n])])
-        if near[n].any() else np.zeros(0)
+    return [
+        np.concatenate([
+            np.zeros(0),
+            *(np.arange(theta[n, i], theta[n, i + 1], FINE_STEP)[1:] for i in np.flatnonzero(near[n])),
+        ])
         for n in range(len(theta))
     ]  # fmt: skip
-    return _padded(lists)
 
 
-def _beside_circles(active: ActiveModel, frequency: float, azimuth: Floats) -> Floats:
-    """Angles (n, m) close to where every ray crosses a circle, padded with the horizon."""
+def _beside_circles(
+    active: ActiveModel, frequency: float, azimuth: Floats, theta: Floats, worst: Floats, level: float
+) -> list[Floats]:
+    """Angles close to where every ray crosses a circle, up to where the level is first passed."""
     outwards = np.stack([np.cos(azimuth), np.sin(azimuth)], axis=1)
+    over = worst > level
+    last = np.where(over.any(axis=1), theta[np.arange(len(theta)), np.argmax(over, axis=1)], HORIZON)
     crossings: list[list[float]] = [[] for _ in azimuth]
     for line in circles(active.model.view, frequency):
         along = outwards @ line.centre
@@ -128,8 +141,8 @@ def _beside_circles(active: ActiveModel, frequency: float, azimuth: Floats) -> F
         for n in np.flatnonzero(rest >= 0):
             for root in (along[n] - np.sqrt(rest[n]), along[n] + np.sqrt(rest[n])):
                 s = root + BESIDE
-                crossings[n] += list(s[(s > 0) & (s < np.sin(HORIZON))])
-    return _padded([np.arcsin(np.array(found)) for found in crossings])
+                crossings[n] += list(s[(s > 0) & (s < np.sin(last[n]))])
+    return [np.arcsin(np.array(found)) for found in crossings]
 
 
 def _padded(lists: list[Floats]) -> Floats:
@@ -141,7 +154,7 @@ def _worst(active: ActiveModel, frequency: float, azimuth: Floats, theta: Floats
     """Highest share of power over the driven ports at angles theta (n, m) along azimuths (n,), (n, m)."""
     s = np.sin(theta)
     uv = np.stack([s * np.cos(azimuth)[:, None], s * np.sin(azimuth)[:, None]], axis=-1).reshape(-1, 2)
-    distinct, back = np.unique(np.round(uv, 9), axis=0, return_inverse=True)
+    distinct, back = np.unique(np.round(uv, 9).astype(float), axis=0, return_inverse=True)
     return active.power(frequency, distinct).max(axis=1)[back.ravel()].reshape(theta.shape)
 
 

@@ -13,10 +13,10 @@ from .active import ActiveModel
 
 Floats = NDArray[np.float64]
 
-SPACING = np.radians(2.5)  # of azimuths along a crest
+SPACING = np.radians(5.0)  # of azimuths along a crest
 WIDEST = np.radians(25.0)  # gap of azimuth that is still bridged
 MARGIN = np.radians(3.0)  # searched beyond both ends
-OFFSETS = np.concatenate([-(1e-4 * 1.8 ** np.arange(12))[::-1], [0.0], 1e-4 * 1.8 ** np.arange(12)])
+OFFSETS = np.concatenate([-(1e-4 * 2.4 ** np.arange(8))[::-1], [0.0], 1e-4 * 2.4 ** np.arange(8)])
 EXACT = 1e-5
 MOST_STEPS = 40
 RIM = 0.9999
