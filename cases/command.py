@@ -266,6 +266,7 @@ def _show_outcome(outcome: Outcome, files: list[Path]) -> None:
     """The verdict in words, the files, and nothing that the report says better."""
     from .judge import degrees, number
     from .report import error_text, headline, margin_text
+    from .survey_text import blindness_summary, signed_rows
 
     assert outcome.result is not None
     click.echo(headline(outcome.result, outcome.verdicts))
@@ -285,6 +286,10 @@ def _show_outcome(outcome: Outcome, files: list[Path]) -> None:
                    f"impedance +/- {100 * accuracy.impedance:.1f} %")  # fmt: skip
     else:
         click.echo(f"estimated error: none made ({accuracy.note})")
+    if outcome.result.survey is not None:
+        for name, text in signed_rows(outcome.result)[1:5]:
+            click.echo(f"{name[0].lower()}{name[1:]}: {text}")
+        click.echo(f"blindness: {blindness_summary(outcome.result)}")
     if outcome.result.certificate is not None:
         click.echo(f"reduced model: {outcome.result.certificate}")
     for path in files:

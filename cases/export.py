@@ -10,17 +10,22 @@ from pathlib import Path
 import numpy as np
 
 from ..solver.pattern import axial_ratio, decibel
+from ..solver.survey import Survey
 from .judge import judge
 from .result import Result
 
 
 def write_tables(folder: Path, result: Result) -> tuple[Path, ...]:
-    """Write reflection.csv, pattern.csv and limits.csv into `folder`; returns their paths."""
-    files = (
+    """Write reflection.csv, pattern.csv and limits.csv into `folder`, and of a survey blindness.csv and
+    clear-cone.csv; returns their paths."""
+    files = [
         (Path(folder) / "reflection.csv", reflection_rows(result)),
         (Path(folder) / "pattern.csv", pattern_rows(result)),
         (Path(folder) / "limits.csv", limit_rows(result)),
-    )
+    ]
+    if result.survey is not None:
+        files.append((Path(folder) / "blindness.csv", blindness_rows(result, result.survey)))
+        files.append((Path(folder) / "clear-cone.csv", cone_rows(result.survey)))
     for path, rows in files:
         write_csv(path, rows)
     return tuple(path for path, _ in files)
@@ -78,6 +83,35 @@ def limit_rows(result: Result) -> Iterable[Sequence[object]]:
             v.margin, v.error, v.unit, v.frequency / 1e9, np.degrees(v.theta), np.degrees(v.phi),
             v.port or "", v.points, v.reason,
         )  # fmt: skip
+
+
+def blindness_rows(result: Result, survey: Survey) -> Iterable[Sequence[object]]:
+    """One row per peak of every blindness and strong mismatch; the last of each is its worst over frequency."""
+    ports, absorbers = result.port_names, result.sweep.loss_names
+    yield (
+        "number", "worst", "blind", *PLACE, "port", "gamma_db", "width_deg", *(f"returned_{name}" for name in ports),
+        "radiated", "lobes", *(f"absorbed_{name}" for name in absorbers), "cause", "surface_wave", "order_p",
+        "order_q", "index", "expected_index", "share", "quality", "opposite_alike",
+    )  # fmt: skip
+    for n, one in enumerate(survey.blindnesses, start=1):
+        cause = one.cause
+        peaks = (*one.peaks, one.worst)
+        for i, peak in enumerate(peaks):
+            yield (
+                n, int(i + 1 == len(peaks)), int(one.is_blind), peak.frequency / 1e9, np.degrees(peak.theta),
+                np.degrees(peak.phi), peak.u, peak.v, ports[peak.port], decibel(peak.power), np.degrees(peak.width),
+                *peak.returned, peak.radiated, peak.lobes, *peak.absorbed, cause.kind, cause.wave, *cause.order,
+                cause.index, cause.expected, cause.share, cause.quality, int(one.mirrored),
+            )  # fmt: skip
+
+
+def cone_rows(survey: Survey) -> Iterable[Sequence[object]]:
+    """First scan angle at which the limit is passed, by frequency and azimuth; 90 where it never is."""
+    cone = survey.free_cone
+    yield ("frequency_ghz", "phi_deg", "clear_theta_deg", "limit_db")
+    for f, frequency in enumerate(cone.frequency):
+        for azimuth, theta in zip(cone.azimuth, cone.theta[f], strict=True):
+            yield (frequency / 1e9, np.degrees(azimuth), np.degrees(theta), decibel(cone.level))
 
 
 PLACE = ("frequency_ghz", "theta_deg", "phi_deg", "u", "v")

@@ -8,6 +8,7 @@ from .drawing import cell_drawing, lattice_diagram
 from .plot import Drawing
 from .result import Result
 from .stack_drawing import stack_drawing
+from .survey_charts import angle_map, blindness_paths, clear_cone, reflection_maps
 
 
 def draw_all(result: Result) -> tuple[Drawing, ...]:
@@ -15,7 +16,10 @@ def draw_all(result: Result) -> tuple[Drawing, ...]:
     them."""
     drawn = (
         reflection_cuts(result),
-        scan_maps(result),
+        scan_maps(result) if result.survey is None else reflection_maps(result),
+        angle_map(result),
+        clear_cone(result),
+        blindness_paths(result),
         band(result),
         reflection_chart(result),
         gain_cuts(result),

@@ -86,7 +86,8 @@ class Verdict:
         if not np.isfinite(self.theta) or np.isneginf(self.worst):
             return ""
         port = f", port {self.port}" if self.port else ""
-        angles = f"theta {degrees(self.theta)}, phi {degrees(self.phi % (2 * np.pi))}"
+        turn = np.radians(round(np.degrees(self.phi), 2) % 360.0)
+        angles = f"theta {degrees(self.theta)}, phi {degrees(turn)}"
         return f"{angles}, {self.frequency / 1e9:.6g} GHz{port}"
 
 
@@ -196,7 +197,9 @@ def number(value: float, unit: str) -> str:
     """A value with its unit as the report prints it."""
     if np.isneginf(value):
         return "none"
-    return f"{value:.2f} {unit}" if unit else f"{value:.4f}"
+    digits = 2 if unit else 4
+    text = f"{round(value, digits) + 0.0:.{digits}f}"
+    return f"{text} {unit}" if unit else text
 
 
 def degrees(angle: float) -> str:

@@ -12,6 +12,7 @@ import numpy as np
 
 from ..solver.pattern import LIGHT_SPEED, decibel
 from .expect import compare
+from .interactive import interactive_map
 from .job import Job
 from .judge import CLOSE, FAILED, MET, OPEN, Verdict, degrees, judge, number
 from .layers import layer_rows, stack_summary
@@ -19,13 +20,15 @@ from .plot import Drawing, driven_ports
 from .progress import duration
 from .result import CONVENTIONS, Result
 from .surface_waves import WHY, trouble, wave_header, wave_rows, wave_summary
+from .survey_text import HARM, blindness_texts, searched_text, signed_rows
 
 MARKS = {MET: "met", FAILED: "failed", CLOSE: "close", OPEN: "open"}
 TABLE_ANGLES = np.radians([0, 15, 30, 45, 60, 75])
 
 
 def write_report(path: Path, result: Result, figures: Sequence[Drawing]) -> None:
-    """Write the self-contained report (no network, no scripts), replacing an older one only when complete."""
+    """Write the self-contained report, replacing an older one only when complete: nothing from a network, and no
+    scripts but those of the interactive map."""
     path = Path(path)
     temporary = path.with_name(f".{path.name}.{os.getpid()}")
     try:
@@ -53,10 +56,16 @@ def report_text(result: Result, figures: Sequence[Drawing]) -> str:
         tone=tone(result, verdicts),
         failure=result.failure,
         verdicts=[_verdict_row(verdict) for verdict in verdicts],
+        signed=signed_rows(result),
+        blindness=blindness_texts(result),
+        surveyed=result.survey is not None,
+        searched="" if result.survey is None else searched_text(result.survey),
+        harm=HARM if any(item.inside for item in blindness_texts(result)) else "",
         facts=_facts(result),
         accuracy=_accuracy(result),
         comparisons=[_comparison_row(item) for item in compare(result)],
         figures=[_figure(figure) for figure in figures],
+        interactive=_interactive(result),
         impedance=_impedance_rows(result),
         several_ports=len(driven_ports(result)) > 1,
         checks=_checks(result),
@@ -210,6 +219,14 @@ def _comparison_row(item: Any) -> dict[str, Any]:
 def _figure(figure: Drawing) -> dict[str, str]:
     data = base64.b64encode(figure.data).decode("ascii")
     return {"source": f"data:{figure.media};base64,{data}", "words": figure.words, "caption": figure.caption}
+
+
+def _interactive(result: Result) -> Any:
+    """The interactive map of a surveyed run, ready-made HTML; empty without a survey."""
+    from markupsafe import Markup
+
+    survey = result.survey
+    return Markup("" if survey is None else interactive_map(result.job, survey.scan_map, survey.blindnesses))
 
 
 def _impedance_rows(result: Result) -> list[dict[str, str]]:

@@ -158,3 +158,12 @@ def _nearest_text(item: SurfaceWave, cone: float) -> str:
 
 def _angle(theta: float) -> str:
     return degrees(theta) if np.isfinite(theta) else "never"
+
+
+def surface_waves_at(job: Job, frequency: float) -> dict[str, float]:
+    """beta/k by name at a frequency in Hz; empty in air, and where they could not be found."""
+    stack = job.cell.stack
+    if stack is None or stack.is_air:
+        return {}
+    waves, _ = _waves(stack, 2 * np.pi * frequency / LIGHT_SPEED)
+    return {wave.name: float(wave.beta.real) for wave in waves}

@@ -1,0 +1,308 @@
+"""What a survey found, in the words of the trade: figures to sign, blindness, cause, and what would move it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from ..geometry.lattice import Lattice
+from ..geometry.stack import Stack
+from ..solver.guided_waves import guided_waves
+from ..solver.pattern import LIGHT_SPEED, decibel
+from ..solver.survey import Blindness, Peak, Survey
+from .job import Job
+from .judge import degrees
+from .result import Result
+
+HARM = (
+    "In these directions most of the available power of every element returns into its transmitter at once. Keep them "
+    "out of the beam-steering tables, or prove that the transmitters survive."
+)
+LESS = (0.05, 0.10)  # of spacing, thickness and permittivity, for the advice
+
+
+@dataclass(frozen=True)
+class BlindnessText:
+    """One blindness in words: heading, where, how it moves, what becomes of the power, cause, advice."""
+
+    title: str
+    inside: bool
+    where: str
+    moves: str
+    power: str
+    cause: str
+    advice: str
+
+
+def signed_rows(result: Result) -> list[tuple[str, str]]:
+    """The figures a designer signs, as (name, text); none without a survey."""
+    survey = result.survey
+    if survey is None:
+        return []
+    cone = survey.free_cone
+    rows: list[tuple[str, str]] = []
+    level = f"active reflection at most {decibel(cone.level):.4g} dB in every driven port"
+    if not any(limit.quantity == "reflection" for limit in result.job.limits):
+        level += " (half of the power: the case sets no reflection limit)"
+    rows.append(("Judged at", level))
+    rows.append(("Largest clear cone, all azimuths, whole band", _cone_text(cone.cone)))
+    if cone.by_plane:
+        planes = "; ".join(f"phi {degrees(phi)}: {_cone_text(theta)}" for phi, theta in cone.by_plane)
+        rows.append(("Largest clear angle by cut, both sides", planes))
+    rows.append((f"Band usable in the cone of {degrees(cone.wanted)}", usable_text(result)))
+    if np.isfinite(cone.gain_drop):
+        rows.append(("Worst drop of gain from broadside in the clear cone", f"{cone.gain_drop:.2f} dB"))
+    if np.isfinite(cone.wanted_drop):
+        rows.append((f"Worst drop of gain in the cone of {degrees(cone.wanted)}", _drop_text(cone.wanted_drop)))
+    rows.append(("Blindness", blindness_summary(result)))
+    certificate = result.certificate
+    confirmed = "" if certificate is None else (
+        f"; estimated {certificate.estimated:.1e}, confirmed {certificate.confirmed:.1e} by "
+        f"{len(certificate.errors)} full solutions held back"
+    )  # fmt: skip
+    rows.append(("Error of the active reflection against a full solution", f"{survey.error:.1e}{confirmed}"))
+    return rows
+
+
+def usable_text(result: Result) -> str:
+    """The band over which the wanted cone is clear."""
+    survey = result.survey
+    assert survey is not None
+    usable, frequency = survey.free_cone.usable, result.job.frequency
+    if usable is None:
+        return "none of the frequencies looked at"
+    low, high = usable
+    whole = low <= frequency[0] * (1 + 1e-9) and high >= frequency[-1] * (1 - 1e-9)
+    if high <= low * (1 + 1e-9):
+        return f"{low / 1e9:.6g} GHz" + (", the whole band" if whole else " only")
+    return f"{low / 1e9:.5g} to {high / 1e9:.5g} GHz" + (", the whole band" if whole else "")
+
+
+def blindness_summary(result: Result) -> str:
+    """How many, and the first one inside the scan cone."""
+    survey = result.survey
+    assert survey is not None
+    blind = [one for one in survey.blindnesses if one.is_blind]
+    inside = [one for one in blind if least_theta(one) <= result.job.scan.cone]
+    if not blind:
+        weak = f", {len(survey.blindnesses)} strong mismatches" if survey.blindnesses else ""
+        return f"none found ({searched_text(survey)}){weak}"
+    if not inside:
+        first = min(least_theta(one) for one in blind)
+        return f"none inside the scan cone; {len(blind)} outside, from theta {degrees(first)} on"
+    first = min(inside, key=least_theta)
+    peak = min(first.peaks, key=lambda p: p.theta)
+    return (
+        f"{len(inside)} inside the scan cone, the first at theta {degrees(peak.theta)}, phi {azimuth_text(peak.phi)}, "
+        f"{peak.frequency / 1e9:.6g} GHz: {short_cause(first)}"
+    )
+
+
+def searched_text(survey: Survey) -> str:
+    """What was looked at."""
+    maps = survey.scan_map
+    count = int(maps.solved.sum())
+    return f"{count} points of {len(maps.frequency)} frequencies, and searches from all maxima, circles and roots"
+
+
+def least_theta(one: Blindness) -> float:
+    """Scan angle nearest to broadside that it reaches, rad."""
+    return min(peak.theta for peak in (*one.peaks, one.worst))
+
+
+def blindness_texts(result: Result) -> list[BlindnessText]:
+    """Every blindness and strong mismatch in words, those inside the scan cone first."""
+    survey = result.survey
+    if survey is None:
+        return []
+    found = sorted(survey.blindnesses, key=lambda one: (least_theta(one) > result.job.scan.cone, least_theta(one)))
+    return [_text(one, result) for one in found]
+
+
+def short_cause(one: Blindness) -> str:
+    """The cause in a few words."""
+    cause = one.cause
+    if cause.kind == "surface wave":
+        return f"surface wave {cause.wave} through the Floquet wave {_order(cause.order)}"
+    if cause.kind == "grating lobe":
+        return f"onset of the grating lobe {_order(cause.order)}"
+    return "resonance of the element and its feed"
+
+
+def _text(one: Blindness, result: Result) -> BlindnessText:
+    job, worst = result.job, one.worst
+    kind = "Blindness" if one.is_blind else "Strong mismatch"
+    inside = least_theta(one) <= job.scan.cone
+    side = "inside" if inside else "outside"
+    port = f", port {result.port_names[worst.port]}" if len(result.port_names) > 1 else ""
+    title = f"{kind} {side} the scan cone: {short_cause(one)}"
+    opposite = "; the opposite direction is the same" if one.mirrored else ""
+    width = ""
+    if np.isfinite(worst.width):
+        width = f", {_width_text(worst.width)} wide where more than half of the power comes back"
+    where = (
+        f"At {_place(worst)}{port}: {_level(worst)} come back{width}{opposite}."
+    )  # fmt: skip
+    return BlindnessText(title, inside, where, _moves(one), _power(worst, result), _cause(one), _advice(one, job))
+
+
+def _place(peak: Peak) -> str:
+    return (
+        f"theta {degrees(peak.theta)}, phi {azimuth_text(peak.phi)} (u = {peak.u:.4f}, v = {peak.v + 0.0:.4f}), "
+        f"{peak.frequency / 1e9:.6g} GHz"
+    )
+
+
+def azimuth_text(phi: float) -> str:
+    """Azimuth from 0 to below 360 degrees."""
+    return degrees(np.radians(round(np.degrees(phi), 2) % 360.0))
+
+
+def _level(peak: Peak) -> str:
+    return (
+        f"{100 * min(peak.power, 9.99):.4g} % of the port's power ({round(float(decibel(peak.power)), 3) + 0.0:g} dB)"
+    )
+
+
+def _moves(one: Blindness) -> str:
+    first, last = one.peaks[0], one.peaks[-1]
+    if first is last:
+        return f"Seen at {first.frequency / 1e9:.6g} GHz only, of the frequencies looked at."
+    per_cent = 100 * (last.frequency - first.frequency) / (0.5 * (last.frequency + first.frequency))
+    rate = np.degrees(last.theta - first.theta) / per_cent
+    return (
+        f"From theta {degrees(first.theta)} at {first.frequency / 1e9:.6g} GHz to {degrees(last.theta)} at "
+        f"{last.frequency / 1e9:.6g} GHz: {rate:+.2f} deg per per cent of frequency."
+    )
+
+
+def _power(peak: Peak, result: Result) -> str:
+    """Where the power goes, largest share first; shares below 0.05 per cent are left out."""
+    names = result.port_names
+    shares = [(f"into the generator of port {names[n]}", float(s)) for n, s in enumerate(peak.returned)]
+    shares += [("radiated into the main wave", peak.radiated), ("into other Floquet waves", peak.lobes)]
+    shares += [
+        (f"absorbed in {name}", float(s)) for name, s in zip(result.sweep.loss_names, peak.absorbed, strict=True)
+    ]
+    told = [f"{100 * share:.3g} % {name}" for name, share in sorted(shares, key=lambda x: -x[1]) if share >= 5e-4]
+    return f"Of the available power {', '.join(told)}."
+
+
+def _cause(one: Blindness) -> str:
+    cause = one.cause
+    if cause.kind == "surface wave":
+        return (
+            f"Surface wave {cause.wave} of the bare stack: the Floquet wave {_order(cause.order)} runs at "
+            f"{cause.index:.4f} k, {cause.wave} of the bare stack at {cause.expected:.4f} k (the conductors shift it), "
+            f"and carries {100 * cause.share:.0f} % of the reaction of all Floquet waves near it{_quality(one)}."
+        )
+    if cause.kind == "grating lobe":
+        return (
+            f"The Floquet wave {_order(cause.order)} grazes the array here ({cause.index:.4f} k) and carries "
+            f"{100 * cause.share:.0f} % of the reaction: a grating lobe is about to leave."
+        )
+    return f"No Floquet wave meets anything here: the element and its feed resonate{_quality(one)}."
+
+
+def _quality(one: Blindness) -> str:
+    q = one.cause.quality
+    if not np.isfinite(q):
+        return ""
+    return f"; the array has a root nearby of quality factor {q:.3g}" if q < 1e5 else "; the root nearby is real"
+
+
+def _advice(one: Blindness, job: Job) -> str:
+    """What would move it, where physics says so plainly."""
+    peak, cause = one.worst, one.cause
+    if cause.kind == "resonance":
+        return (
+            "What moves it is the element: its length or size, the feed, the height over ground. A study of those "
+            "dimensions tells; no number can be promised."
+        )
+    k = 2 * np.pi * peak.frequency / LIGHT_SPEED
+    said = [_spacing_advice(one, job.cell.lattice, k)]
+    stack = job.cell.stack
+    if cause.kind == "surface wave" and stack is not None:
+        said += [
+            _stack_advice(one, job.cell.lattice, k, stack, "thickness"),
+            _stack_advice(one, job.cell.lattice, k, stack, "permittivity"),
+            "Fences or cavities round each element, and elements whose currents do not run along (TM) or across (TE) "
+            "that wave, weaken it (common practice).",
+        ]
+    return " ".join(text for text in said if text)
+
+
+def _spacing_advice(one: Blindness, lattice: Lattice, k: float) -> str:
+    met = [
+        meeting_angle(_scaled(lattice, 1 - less), k, one.cause.order, one.cause.expected, one.worst.phi)
+        for less in LESS
+    ]
+    texts = [f"{100 * less:.0f} % less: {_met_text(theta)}" for less, theta in zip(LESS, met, strict=True)]
+    now = meeting_angle(lattice, k, one.cause.order, one.cause.expected, one.worst.phi)
+    meets = "meets it" if one.cause.kind == "surface wave" else "starts"
+    return (
+        f"A closer lattice moves it outwards: in this azimuth the Floquet wave {meets} at {_met_text(now)} now, with "
+        f"the spacing {', '.join(texts)}."
+    )
+
+
+def _stack_advice(one: Blindness, lattice: Lattice, k: float, stack: Stack, what: str) -> str:
+    """Angle at which the wave is met with all layers 10 % thinner, or of 10 % less permittivity (but not below 1)."""
+    factor = 1 - LESS[-1]
+    if what == "thickness":
+        layers = tuple(replace(layer, thickness=factor * layer.thickness) for layer in stack.layers)
+    else:
+        layers = tuple(
+            replace(layer, permittivity=max(1.0, factor * layer.permittivity)) if layer.permittivity > 1 else layer
+            for layer in stack.layers
+        )
+    try:
+        waves = guided_waves(Stack(layers, stack.ground), k)
+    except (RuntimeError, ValueError):
+        return ""
+    name = f"{100 * LESS[-1]:.0f} % {'thinner layers' if what == 'thickness' else 'less permittivity'}"
+    beta = next((float(np.real(w.beta)) for w in waves if w.name == one.cause.wave), None)
+    if beta is None:
+        return f"With {name} there is no {one.cause.wave} any more."
+    theta = meeting_angle(lattice, k, one.cause.order, beta, one.worst.phi)
+    sheets = ", sheets left out" if stack.sheets else ""
+    return f"With {name}{sheets} {one.cause.wave} runs at {beta:.4f} k and is met at {_met_text(theta)}."
+
+
+def meeting_angle(lattice: Lattice, k: float, order: tuple[int, int], index: float, phi: float) -> float:
+    """Least scan angle (rad) in the azimuth phi at which the Floquet wave `order` runs at ``index k``:
+    ``|s (cos phi, sin phi) + G/k| = index``; NaN where it never does."""
+    g = np.array(order) @ lattice.reciprocal / k
+    along = float(g @ [np.cos(phi), np.sin(phi)])
+    rest = along**2 - float(g @ g) + index**2
+    if rest < 0:
+        return np.nan
+    roots = np.array([-along - np.sqrt(rest), -along + np.sqrt(rest)])
+    roots = roots[(roots >= 0) & (roots <= 1)]
+    return float(np.arcsin(roots.min())) if len(roots) else np.nan
+
+
+def _scaled(lattice: Lattice, factor: float) -> Lattice:
+    return Lattice(lattice.a * factor, lattice.b * factor)
+
+
+def _met_text(theta: float) -> str:
+    return f"theta {np.degrees(theta):.1f} deg" if np.isfinite(theta) else "no angle"
+
+
+def _cone_text(theta: float) -> str:
+    return "all of visible space" if theta >= np.pi / 2 - 1e-9 else f"theta {np.degrees(theta):.1f} deg"
+
+
+def _drop_text(drop: float) -> str:
+    return f"{drop:.2f} dB" if drop < 40 else "more than 40 dB"
+
+
+def _width_text(width: float) -> str:
+    angle = np.degrees(width)
+    return f"{angle:.1f} deg" if angle >= 1 else f"{angle:.2g} deg"
+
+
+def _order(order: tuple[int, int]) -> str:
+    return f"({order[0]}, {order[1]})"
