@@ -4,7 +4,7 @@
   const root = document.getElementById("scan-map");
   const one = (selector) => root.querySelector(selector);
   const MISSING = -32768;
-  const LEAST = -70; // dB; below, the reflection is lost in the rounding of the stored numbers
+  const LEAST = -60; // dB; below, the reflection is lost in the rounding of the stored numbers
   const MOST = 1e5; // ohm
   const LOBE = "Grating lobe enters";
   const FINE = 4; // shades drawn per step of the grid
@@ -58,24 +58,30 @@
   const decibel = ([re, im]) => 20 * Math.log10(Math.hypot(re, im));
   const signed = (x, digits) => x.toFixed(digits).replace("-", "−").replace(/^−(0(\.0*)?)$/, "$1");
 
+  const theta = (u, v) => `${((Math.asin(Math.min(1, Math.hypot(u, v))) * 180) / Math.PI).toFixed(1)}°`;
+  const phi = (u, v) => `${(((Math.atan2(v, u) * 180) / Math.PI + 360) % 360).toFixed(1).replace("360.0", "0.0")}°`;
+
   // R (1 + Gamma) / (1 - Gamma)
   function impedance([re, im], resistance) {
     const under = (1 - re) ** 2 + im ** 2;
     return [(resistance * (1 - re * re - im * im)) / under, (resistance * 2 * im) / under];
   }
 
-  function ohms(z) {
-    if (!(Math.hypot(z[0], z[1]) < MOST)) return ["open", "circuit"];
-    return [`${signed(z[0], 1)} Ω`, `${signed(z[1], 1)} Ω`];
+  // As many digits as the rounding of the stored reflection leaves: |dZ| = 2 R |dGamma| / |1 - Gamma|^2.
+  function ohms([re, im], resistance, step) {
+    const [r, x] = impedance([re, im], resistance);
+    if (!(Math.hypot(r, x) < MOST)) return ["open", "circuit"];
+    const error = (2 * resistance * step) / ((1 - re) ** 2 + im ** 2);
+    const power = Math.max(-1, Math.ceil(Math.log10(error)));
+    return [r, x].map((part) => `${signed(Math.round(part / 10 ** power) * 10 ** power, Math.max(0, -power))} Ω`);
   }
 
   function words(map, data, state, place) {
     const blank = { theta: "", phi: "", resistance: "", reactance: "", reflection: "", co: "", cross: "" };
     if (place === null) return blank;
     const u = map.u(place), v = map.v(place);
-    const phi = (Math.atan2(v, u) * 180) / Math.PI;
     const gamma = map.reflection(state.frequency, state.port, place);
-    const z = gamma ? ohms(impedance(gamma, data.ports[state.port].resistance)) : ["", ""];
+    const z = gamma ? ohms(gamma, data.ports[state.port].resistance, data.reflection.step) : ["", ""];
     const level = gamma ? decibel(gamma) : null;
     const gain = (part) => {
       const value = map.gain(state.frequency, part, place);
@@ -83,8 +89,8 @@
       return value <= data.gain.floor ? `< ${signed(data.gain.floor, 0)} dBi` : `${signed(value, 2)} dBi`;
     };
     return {
-      theta: `${((Math.asin(Math.min(1, Math.hypot(u, v))) * 180) / Math.PI).toFixed(1)}°`,
-      phi: `${((phi + 360) % 360).toFixed(1)}°`,
+      theta: theta(u, v),
+      phi: phi(u, v),
       resistance: z[0],
       reactance: z[1],
       reflection: level === null ? "" : level < LEAST ? `< ${signed(LEAST, 0)} dB` : `${signed(level, 2)} dB`,
@@ -99,6 +105,11 @@
       for (const row of root.querySelectorAll(".readout tbody tr")) row.children[column].textContent = text[row.dataset.row];
     }
   }
+
+  // The pinned column for those who listen.
+  const spoken = (text) =>
+    `Pinned: theta ${text.theta}, phi ${text.phi}, impedance ${text.resistance} and ${text.reactance}, ` +
+    `active reflection ${text.reflection}, gain ${text.co}`;
 
   // Part of a circle inside visible space.
   function arc([x, y, radius]) {
@@ -193,11 +204,13 @@
     return found;
   }
 
-  // Which Floquet waves the circles belong to.
-  function legend(circles) {
+  // Which Floquet waves the circles belong to, and how high the marked peaks are.
+  function legend(circles, peaks) {
     const groups = new Map();
     for (const [, , , name, order] of circles) groups.set(name, [...(groups.get(name) || []), order.replaceAll("-", "−")]);
-    return [...groups].map(([name, orders]) => `${name}: ${orders.join(" ")}`).join(". ");
+    const lines = [...groups].map(([name, orders]) => `${name}: ${orders.join(" ")}`);
+    const told = peaks.map(([u, v, , level]) => `${signed(level, 2)} dB at θ ${theta(u, v)}, φ ${phi(u, v)}`);
+    return told.length ? [...lines, `Peaks: ${told.join("; ")}`] : lines;
   }
 
   // Square frame as wide as the column lets it be.
@@ -215,7 +228,13 @@
       const hertz = `${(data.frequency[state.frequency] / 1e9).toFixed(4).replace(/\.?0+$/, "")} GHz`;
       one(".hertz").textContent = hertz;
       if (slider) slider.setAttribute("aria-valuetext", hertz);
-      one(".circles").textContent = legend(data.circles[state.frequency]);
+      const peaks = data.peaks[state.frequency].filter((peak) => peak[2] === state.port);
+      const lines = legend(data.circles[state.frequency], peaks).map((line) => {
+        const item = document.createElement("li");
+        item.textContent = line;
+        return item;
+      });
+      one(".circles").replaceChildren(...lines);
       draw.all(state);
       show(map, data, state);
     }
@@ -224,6 +243,7 @@
       Object.assign(state, changes);
       draw.marks(state);
       show(map, data, state);
+      if (changes.pin !== undefined) one(".spoken").textContent = spoken(words(map, data, state, state.pin));
     }
 
     one(".quantity").addEventListener("change", (event) => { state.quantity = event.target.value; update(); });
