@@ -1,8 +1,8 @@
 """A path for integrals over k_t = 0..top of functions singular on the real axis, times Bessel functions J_n(k_t rho).
 
 With exp(+j w t) and a little loss everywhere branch points and surface-wave poles lie just below the positive real
-axis, so the path passes above them. It is lifted by about 1 / rho at most, where the Bessel functions have not grown yet;
-panels shrink towards the singularities until Gauss's rule sees them far away.
+axis, so the path passes above them. It is lifted by about 1 / rho at most, where the Bessel functions have not grown
+yet; panels shrink towards the singularities until Gauss's rule sees them far away.
 """
 
 from __future__ import annotations
@@ -48,8 +48,9 @@ def radial_contour(top: float, singular: Sequence[float], longest: float, extent
     count = max(1, int(np.ceil(abs(start) / largest)))
     corners = np.concatenate([start * np.arange(count) / count, np.array(edges) + 1j * lift])
     x, w = gauss(POINTS)
-    width = np.asarray(np.diff(corners), dtype=complex)
-    return (corners[:-1, None] + width[:, None] * x).ravel(), (width[:, None] * w).ravel()
+    width = np.diff(corners)[:, None]
+    nodes, weights = corners[:-1, None] + width * x, width * w
+    return nodes.ravel().astype(complex), weights.ravel().astype(complex)
 
 
 def bessel_table(highest: int, z: Complexes) -> Complexes:
@@ -65,7 +66,7 @@ def bessel_table(highest: int, z: Complexes) -> Complexes:
     rising = [jv(0, up), jv(1, up)]
     for n in range(1, highest):
         rising.append(2 * n / up * rising[-1] - rising[-2])
-    result[:, large] = np.array(rising[: highest + 1]).reshape(-1, up.size)
+    result[:, large] = np.array(rising[: highest + 1]).reshape(highest + 1, up.size)
     result[:, ~large] = _miller(highest, flat[~large])
     return result.reshape(highest + 1, *np.shape(z))
 
