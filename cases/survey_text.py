@@ -195,7 +195,7 @@ def _cause(one: Blindness) -> str:
         return (
             f"Surface wave {cause.wave} of the bare stack: the Floquet wave {_order(cause.order)} runs at "
             f"{cause.index:.4f} k, {cause.wave} of the bare stack at {cause.expected:.4f} k (the conductors shift it), "
-            f"and carries {100 * cause.share:.0f} % of the reaction of all Floquet waves near it{_quality(one)}."
+            f"and carries {100 * cause.share:.0f} % of the reaction of all Floquet waves near it."
         )
     if cause.kind == "grating lobe":
         return (
@@ -209,7 +209,7 @@ def _quality(one: Blindness) -> str:
     q = one.cause.quality
     if not np.isfinite(q):
         return ""
-    return f"; the array has a root nearby of quality factor {q:.3g}" if q < 1e5 else "; the root nearby is real"
+    return f", with a quality factor of {q:.3g}"
 
 
 def _advice(one: Blindness, job: Job) -> str:

@@ -30,6 +30,7 @@ NEAR_HORIZON = 0.9
 LOW_ELEVATION = 0.996  # beyond (85 deg) every element returns nearly all; only what meets a circle is looked at
 AXIS = 1e-3  # v below which a direction counts as in the plane of u
 FULL = 0.995  # share of a single port's power that is not driven higher over frequency
+BROAD = np.radians(60.0)
 STEEP = 0.9996  # directions beyond are the horizon's
 NARROW = 0.05  # imaginary part of a root in frequency, over the step between frequencies, that starts a search
 ROOT_DIRECTIONS = 0.25  # spacing of the directions (cosines) where roots in frequency are sought
@@ -56,6 +57,8 @@ def find_blindness(
 ) -> tuple[Blindness, ...]:
     """All blindnesses in visible space and, inside `cone` (rad), strong mismatches too, the worst first.
 
+    Of resonances so broad that the element is mismatched over most of space only the worst is given.
+
     Parameters
     ----------
     scan_map : of the same model and drive; its frequencies are those searched
@@ -75,7 +78,9 @@ def find_blindness(
         if progress:
             progress(f + 1, count)
     described = [_describe(active, chain, scan_map.frequency) for chain in chains]
-    return tuple(sorted(described, key=lambda one: (-round(one.worst.power, 3), one.worst.theta)))
+    ordered = sorted(described, key=lambda one: (-round(one.worst.power, 3), one.worst.theta))
+    broad = [one for one in ordered if one.cause.kind == "resonance" and one.worst.width > BROAD]
+    return tuple(one for one in ordered if not any(one is other for other in broad[1:]))
 
 
 def _at_one(

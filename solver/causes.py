@@ -39,7 +39,6 @@ def find_cause(active: ActiveModel, frequency: float, uv: Floats) -> Cause:
     """Cause of strong reflection at direction cosines (2,) and a frequency in Hz."""
     k = wavenumber(frequency)
     found = reactions(active, k, k * uv)
-    q = quality(active.model, k, k * uv)
     best: tuple[float, Cause] | None = None
     for i in np.flatnonzero((found.share > LEAST_SHARE) & found.orders.any(axis=1)):
         order = int(found.orders[i, 0]), int(found.orders[i, 1])
@@ -49,11 +48,13 @@ def find_cause(active: ActiveModel, frequency: float, uv: Floats) -> Cause:
             carried = found.along[i] if tm else 1 - found.along[i]
             gap = abs(index - beta) / NEAR_SURFACE
             if gap < 1 and carried > LEAST_ALONG and (best is None or gap < best[0]):
-                best = gap, Cause("surface wave", wave.name, order, index, beta, share, q)
+                best = gap, Cause("surface wave", wave.name, order, index, beta, share, np.nan)
         gap = abs(index - 1) / NEAR_LIGHT
         if gap < 1 and (best is None or gap < best[0]):
-            best = gap, Cause("grating lobe", "", order, index, 1.0, share, q)
-    return best[1] if best else Cause("resonance", "", (0, 0), np.nan, np.nan, np.nan, q)
+            best = gap, Cause("grating lobe", "", order, index, 1.0, share, np.nan)
+    if best:
+        return best[1]
+    return Cause("resonance", "", (0, 0), np.nan, np.nan, np.nan, quality(active.model, k, k * uv))
 
 
 def nearest_meeting(active: ActiveModel, frequency: float, uv: Floats) -> tuple[str, str, tuple[int, int]]:

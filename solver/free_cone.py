@@ -14,6 +14,7 @@ from .surface_circles import circles
 from .survey import Blindness, FreeCone, ScanMap
 
 Floats = NDArray[np.float64]
+Complexes = NDArray[np.complex128]
 
 AZIMUTH_STEP = np.radians(5.0)
 THETA_STEP = np.radians(2.0)
@@ -60,7 +61,7 @@ def free_cone(
         rows = [int(np.argmin(np.abs(azimuth - (phi + side) % (2 * np.pi)))) for side in (0.0, np.pi)]
         by_plane.append((float(phi), float(theta[:, rows].min())))
     usable = _usable(active, scan_map.frequency, theta, azimuth, level, wanted)
-    drop = [_drop(active, scan_map, blindnesses, edge, polarisation) for edge in (cone, wanted)]
+    drop = [_drop(active, scan_map, azimuth, blindnesses, edge, polarisation) for edge in (cone, wanted)]
     return FreeCone(level, scan_map.frequency, azimuth, theta, cone, tuple(by_plane), wanted, usable, drop[0], drop[1])
 
 
@@ -220,27 +221,32 @@ def _edge_of_band(
 
 
 def _drop(
-    active: ActiveModel, scan_map: ScanMap, blindnesses: Sequence[Blindness], edge: float,
+    active: ActiveModel,
+    scan_map: ScanMap,
+    azimuth: Floats,
+    blindnesses: Sequence[Blindness],
+    edge: float,
     polarisation: tuple[str, float],
-) -> float:  # fmt: skip
-    """Largest drop (dB) of co-polar gain from broadside inside `edge` (rad), from the map and at the listed peaks."""
+) -> float:
+    """Largest drop (dB) of co-polar gain from broadside inside `edge` (rad): over the map, on the rim, at the listed
+    peaks; NaN for an empty cone."""
+    if edge <= 0:
+        return np.nan
+
+    def co(field: Complexes, phi: Floats) -> Floats:
+        return decibel(np.abs(co_cross(field, phi, *polarisation)[0]) ** 2)
+
     u, v = np.meshgrid(scan_map.axis, scan_map.axis, indexing="ij")
     inside = np.hypot(u, v) <= np.sin(edge) + 1e-12
     middle = len(scan_map.axis) // 2
-    worst = np.nan
-    if edge <= 0:
-        return worst
-    reference = []
-    for field in scan_map.field:
-        co = np.abs(co_cross(field[inside], np.arctan2(v, u)[inside], *polarisation)[0]) ** 2
-        centre = np.abs(co_cross(field[[middle], [middle]], np.zeros(1), *polarisation)[0][0]) ** 2
-        reference.append(centre)
-        worst = float(np.fmax(worst, decibel(centre / np.nanmin(co))))
-    for one in blindnesses:
-        for peak in (*one.peaks, one.worst):
-            if peak.theta <= edge:
-                uv = np.array([[peak.u, peak.v], [0.0, 0.0]])
-                _, field = active.reflection_and_field(peak.frequency, uv)
-                co = np.abs(co_cross(field, np.array([peak.phi, 0.0]), *polarisation)[0]) ** 2
-                worst = float(np.fmax(worst, decibel(co[1]) - decibel(co[0])))
-    return worst
+    rim = np.sin(min(edge, HORIZON)) * np.stack([np.cos(azimuth), np.sin(azimuth)], axis=1)
+    drops = [0.0]
+    for frequency, field in zip(scan_map.frequency, scan_map.field, strict=True):
+        broadside = co(field[[middle], [middle]], np.zeros(1))[0]
+        on_rim = co(active.reflection_and_field(float(frequency), rim)[1], azimuth)
+        drops.append(float(broadside - min(np.nanmin(co(field[inside], np.arctan2(v, u)[inside])), on_rim.min())))
+    for peak in (peak for one in blindnesses for peak in (*one.peaks, one.worst) if peak.theta <= edge):
+        both = np.array([[peak.u, peak.v], [0.0, 0.0]])
+        level = co(active.reflection_and_field(peak.frequency, both)[1], np.array([peak.phi, 0.0]))
+        drops.append(float(level[1] - level[0]))
+    return max(drops)

@@ -16,6 +16,9 @@ Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 Ints = NDArray[np.int64]
 
+STEP = 0.01  # of k between the two matrices from which a root in frequency is told
+NEAR = 0.05  # of k from which roots are counted
+
 
 def roots_between(model: ReducedModel, k1: float, k2: float, kt1: Floats, kt2: Floats) -> tuple[Ints, Complexes]:
     """All roots between pairs of points.
@@ -48,16 +51,17 @@ def terminated(model: ReducedModel, k: float, kt: Floats) -> Complexes:
 def quality(model: ReducedModel, k: float, kt: Floats) -> float:
     """Quality factor of the root nearest in frequency at fixed kt (2,), rad/m: Re k_r / (2 |Im k_r|).
 
-    Infinite for a real root; NaN where none lies within 5 % of k, or where the model's band is a single frequency.
+    NaN where none lies within NEAR of k, or where the model's band is a single frequency. Not to be trusted close to a
+    surface wave or a grazing wave, where the operator is far from linear.
     """
     low, high = model.band
-    step = min(2e-3 * k, 0.5 * (high - low))
+    step = min(STEP * k, high - low)
     if step < 1e-6 * k:
         return np.nan
     k1 = float(np.clip(k - 0.5 * step, low, high - step))
     _, place = roots_between(model, k1, k1 + step, kt[None], kt[None])
     found = k1 + step * place
-    found = found[np.abs(found.real / k - 1) < 0.05]
+    found = found[np.abs(found.real / k - 1) < NEAR]
     if not len(found):
         return np.nan
     nearest = found[np.argmin(np.abs(found - k))]

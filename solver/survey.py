@@ -52,7 +52,7 @@ class Cause:
     index : transverse wavenumber of that Floquet wave over k at the peak; `expected` : that of the surface wave, or 1
         at a light circle; NaN for a resonance
     share : of the reaction of all Floquet waves kept exact, what this one carries at the peak
-    quality : quality factor of the nearest root in frequency; infinite for a real root, NaN where none is near
+    quality : of a resonance, quality factor of the nearest root in frequency; NaN where none is near, and otherwise
     """
 
     kind: str
