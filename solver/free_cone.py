@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.interpolate import RegularGridInterpolator
 
 from .active import ActiveModel
 from .blindness import peak_edge
@@ -18,8 +19,9 @@ Complexes = NDArray[np.complex128]
 
 AZIMUTH_STEP = np.radians(5.0)
 THETA_STEP = np.radians(2.0)
-FINE_STEP = np.radians(0.25)  # where the level is nearly reached
-NEARLY = 0.7  # share of the level from which on a closer look is taken
+DOUBTFUL = 0.6  # share of the level from which on a rough value is replaced by a solution
+FINE_STEP = np.radians(0.5)  # where the level is nearly reached
+NEARLY = 0.85  # share of the level from which on a closer look is taken
 HORIZON = np.radians(89.5)
 HALVINGS = 7  # of the frequency step, to find the edges of the usable band
 BESIDE = np.concatenate(
@@ -52,7 +54,8 @@ def free_cone(
     both = np.concatenate([np.array(planes), np.array(planes) + np.pi]) % (2 * np.pi)
     azimuth = np.unique(np.round(np.concatenate([grid, both]), 9))
     theta = np.array([
-        first_angles(active, float(f), azimuth, level) for f in scan_map.frequency
+        first_angles(active, float(f), azimuth, level, map_power(active, scan_map, i))
+        for i, f in enumerate(scan_map.frequency)
     ])  # fmt: skip
     theta = _with_peaks(active, theta, scan_map.frequency, azimuth, blindnesses, level)
     cone = float(theta.min())
@@ -65,24 +68,51 @@ def free_cone(
     return FreeCone(level, scan_map.frequency, azimuth, theta, cone, tuple(by_plane), wanted, usable, drop[0], drop[1])
 
 
-def first_angles(active: ActiveModel, frequency: float, azimuth: Floats, level: float) -> Floats:
+Rough = Callable[[Floats], Floats]
+"""Share of power at direction cosines (n, 2), highest over the driven ports, good to a few per cent."""
+
+
+def map_power(active: ActiveModel, scan_map: ScanMap, f: int) -> Rough:
+    """`Rough` from the map at its frequency number f, by linear interpolation of the reflection."""
+    axis, reflection = scan_map.axis, np.nan_to_num(scan_map.reflection[f][..., active.driven], nan=1.0)
+    interpolate = RegularGridInterpolator((axis, axis), reflection)
+    return lambda uv: (np.abs(interpolate(uv)) ** 2).max(axis=1)
+
+
+def first_angles(
+    active: ActiveModel, frequency: float, azimuth: Floats, level: float, rough: Rough | None = None,
+    reach: float = HORIZON,
+) -> Floats:  # fmt: skip
     """First scan angle (n,) along every azimuth (n,) at which the level is passed; pi/2 where it never is.
 
-    Looked at in steps of THETA_STEP, in steps of FINE_STEP where the level is nearly reached, and closely about every
-    circle on which a Floquet wave grazes or meets a surface wave.
+    Looked at in steps of THETA_STEP (by `rough` if given, which is then solved where the level is near), in steps of
+    FINE_STEP where the level is nearly reached, and closely about every circle on which a Floquet wave grazes or meets
+    a surface wave.
+
+    reach : angles beyond are not looked at
     """
     if len(active.drive) == 1:  # opposite directions are alike
         half = np.unique(np.round(azimuth % np.pi, 9))
-        angles = _first_angles(active, frequency, half, level)
+        angles = _first_angles(active, frequency, half, level, rough, reach)
         return angles[np.searchsorted(half, np.round(azimuth % np.pi, 9))]
-    return _first_angles(active, frequency, azimuth, level)
+    return _first_angles(active, frequency, azimuth, level, rough, reach)
 
 
-def _first_angles(active: ActiveModel, frequency: float, azimuth: Floats, level: float) -> Floats:
-    theta = np.tile(np.append(np.arange(0.0, HORIZON, THETA_STEP), HORIZON), (len(azimuth), 1))
-    worst = _worst(active, frequency, azimuth, theta)
+def _first_angles(
+    active: ActiveModel, frequency: float, azimuth: Floats, level: float, rough: Rough | None, reach: float
+) -> Floats:
+    theta = np.tile(np.append(np.arange(0.0, reach - 1e-9, THETA_STEP), reach), (len(azimuth), 1))
+    if rough is None:
+        worst = _worst(active, frequency, azimuth, theta)
+    else:
+        worst = rough(_directions(azimuth, theta)).reshape(theta.shape)
+        doubtful = worst > DOUBTFUL * level
+        doubtful &= np.cumsum(worst > level / DOUBTFUL, axis=1) <= 1  # beyond a clear passing nothing matters
+        row, place = np.nonzero(doubtful)
+        exact = active.power(frequency, _directions(azimuth[row], theta[row, place][:, None]))
+        worst[row, place] = exact.max(axis=1)
     for more in (_beside_circles, _closer):
-        added = _padded(more(active, frequency, azimuth, theta, worst, level))
+        added = _padded(more(active, frequency, azimuth, theta, worst, level), reach)
         theta = np.concatenate([theta, added], axis=1)
         worst = np.concatenate([worst, _worst(active, frequency, azimuth, added)], axis=1)
         order = np.argsort(theta, axis=1, kind="stable")
@@ -134,7 +164,7 @@ def _beside_circles(
     """Angles close to where every ray crosses a circle, up to where the level is first passed."""
     outwards = np.stack([np.cos(azimuth), np.sin(azimuth)], axis=1)
     over = worst > level
-    last = np.where(over.any(axis=1), theta[np.arange(len(theta)), np.argmax(over, axis=1)], HORIZON)
+    last = np.where(over.any(axis=1), theta[np.arange(len(theta)), np.argmax(over, axis=1)], theta[:, -1])
     crossings: list[list[float]] = [[] for _ in azimuth]
     for line in circles(active.model.view, frequency):
         along = outwards @ line.centre
@@ -146,15 +176,20 @@ def _beside_circles(
     return [np.arcsin(np.array(found)) for found in crossings]
 
 
-def _padded(lists: list[Floats]) -> Floats:
+def _padded(lists: list[Floats], end: float) -> Floats:
     width = max((len(one) for one in lists), default=0)
-    return np.array([np.append(one, np.full(width - len(one), HORIZON)) for one in lists]).reshape(len(lists), width)
+    return np.array([np.append(one, np.full(width - len(one), end)) for one in lists]).reshape(len(lists), width)
+
+
+def _directions(azimuth: Floats, theta: Floats) -> Floats:
+    """Direction cosines (n m, 2) at angles theta (n, m) along azimuths (n,)."""
+    s = np.sin(theta)
+    return np.stack([s * np.cos(azimuth)[:, None], s * np.sin(azimuth)[:, None]], axis=-1).reshape(-1, 2)
 
 
 def _worst(active: ActiveModel, frequency: float, azimuth: Floats, theta: Floats) -> Floats:
     """Highest share of power over the driven ports at angles theta (n, m) along azimuths (n,), (n, m)."""
-    s = np.sin(theta)
-    uv = np.stack([s * np.cos(azimuth)[:, None], s * np.sin(azimuth)[:, None]], axis=-1).reshape(-1, 2)
+    uv = _directions(azimuth, theta)
     distinct, back = np.unique(np.round(uv, 9).astype(float), axis=0, return_inverse=True)
     return active.power(frequency, distinct).max(axis=1)[back.ravel()].reshape(theta.shape)
 
@@ -213,7 +248,7 @@ def _edge_of_band(
     clear, passed = float(clear), float(passed)
     for _ in range(HALVINGS):
         middle = 0.5 * (clear + passed)
-        if first_angles(active, middle, azimuth, level).min() >= wanted - ANGLE:
+        if first_angles(active, middle, azimuth, level, reach=wanted).min() >= wanted - ANGLE:
             clear = middle
         else:
             passed = middle

@@ -20,7 +20,7 @@ Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
 RIM = 0.9998  # directions beyond are not searched: at the horizon everything comes back
-STARTS = 0.1  # least share of power at a start on the map
+STARTS = 0.35  # least share of power at a start: below, no maximum worth telling is near
 MOST_STARTS = 60
 BESIDE = np.concatenate([[0.0], 1e-4 * 2.0 ** np.arange(10)])  # distances from a circle, direction cosines
 AZIMUTHS = 48  # points along a circle
