@@ -16,9 +16,10 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from ..geometry.errors import InputError, nearest
+from ..geometry.errors import InputError
 from .array_basis import check_separate
 from .array_pattern import element_factors, surface_wave_power
+from .array_sites import Termination, checked_sites, port_impedances
 from .block_toeplitz import BlockToeplitz
 from .gaps import GapFunctional
 from .lag_coupling import lag_couplings
@@ -29,26 +30,10 @@ from .result import ScanPoints
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 Ints = NDArray[np.int64]
-Termination = complex | float | str
 
 DIRECT_LIMIT = 8000  # unknowns up to which the system is factorised (16 bytes times its square)
 ITERATIVE_TOLERANCE = 1e-6
-OPEN = 1e7  # resistance of an open port over its reference
 BATCH = 3000  # directions handled together
-
-
-def rectangle(rows: int, columns: int) -> Ints:
-    """Sites (rows x columns, 2) of a rectangular array: row i, column j at cell (j, i), row by row.
-
-    Raises
-    ------
-    InputError
-        If either number is below 1.
-    """
-    if rows < 1 or columns < 1:
-        raise InputError(f"an array of {rows} by {columns} elements.", where="finite array", allowed="1 or more each")
-    row, column = np.divmod(np.arange(rows * columns), columns)
-    return np.column_stack([column, row])
 
 
 @dataclass(frozen=True)
@@ -105,7 +90,8 @@ class FiniteArray:
     ----------
     model : ReducedModel from `array_basis.build_array_model`
     frequency : Hz, within the model's band
-    sites : (n_site, 2) integer cells of the case's own lattice, all different; `rectangle` lists rows and columns
+    sites : (n_site, 2) integer cells of the case's own lattice, all different; `array_sites.rectangle` lists rows and
+    columns
     terminations : by index of the site: "matched" (in its reference resistance), "open", "short" or an impedance in
     ohm,
         for all ports of elements that are dummies; by (site, port) for single ports. All others are live: driven
@@ -137,11 +123,11 @@ class FiniteArray:
         check_separate(model.view.basis)
         self.model, self.frequency = model, frequency
         self.k = 2 * np.pi * frequency / SPEED_OF_LIGHT
-        self.sites = _checked_sites(sites)
+        self.sites = checked_sites(sites)
         self.positions = model.cell.lattice.positions(self.sites)
         self._gaps, self._load_gaps = (_local(gaps, model.vectors) for gaps in (model.view.ports, model.view.loads))
         n_port = len(model.reference)
-        impedance, live = _port_impedances(len(self.sites), model.reference, terminations or {})
+        impedance, live = port_impedances(len(self.sites), model.reference, terminations or {})
         self._impedance, self._live = impedance, live
         self.ports = np.argwhere(live)
         if not len(self.ports):
@@ -288,18 +274,6 @@ class FiniteArray:
         return float(0.5 * weight @ rings) / 2  # the sphere's mean of the gain, one half of it
 
 
-def _checked_sites(sites: ArrayLike) -> Ints:
-    found = np.asarray(sites)
-    if found.ndim != 2 or found.shape[1] != 2 or not len(found) or not np.all(found == np.round(found)):
-        raise InputError(
-            f"sites of shape {found.shape} are not a list of integer cells.", where="finite array", allowed="(n, 2)"
-        )
-    distinct, count = np.unique(found, axis=0, return_counts=True)
-    if len(distinct) < len(found):
-        raise InputError(f"site {distinct[count > 1][0].tolist()} is listed twice.", where="finite array")
-    return found.astype(np.int64)
-
-
 def _local(gaps: list[GapFunctional], vectors: Complexes) -> Complexes:
     """Functionals of the gaps on the basis of their own element, (r, n_gap).
 
@@ -313,38 +287,3 @@ def _local(gaps: list[GapFunctional], vectors: Complexes) -> Complexes:
             raise InputError("a gap lies on conductors of two cells.", where="finite array", allowed="gaps of one cell")
     columns = [gap.parts[0] @ vectors for gap in gaps]
     return np.stack(columns, axis=1) if columns else np.zeros((vectors.shape[1], 0), dtype=complex)
-
-
-def _port_impedances(
-    n_site: int, reference: Floats, terminations: Mapping[int | tuple[int, int], Termination]
-) -> tuple[Complexes, NDArray[np.bool_]]:
-    """Series impedance of every port (n_site, n_port), ohm, and which are live."""
-    impedance = np.tile(reference.astype(complex), (n_site, 1))
-    live = np.ones(impedance.shape, dtype=bool)
-    for key, wanted in terminations.items():
-        site, ports = (key[0], [key[1]]) if isinstance(key, tuple) else (key, range(len(reference)))
-        if not 0 <= site < n_site or not all(0 <= p < len(reference) for p in ports):
-            raise InputError(
-                f"a termination is given for {key}, which is no site or port of the array.", where="terminations",
-                allowed=f"sites 0 to {n_site - 1}, ports 0 to {len(reference) - 1}",
-            )  # fmt: skip
-        for p in ports:
-            impedance[site, p], live[site, p] = _impedance_of(wanted, float(reference[p])), False
-    return impedance, live
-
-
-def _impedance_of(wanted: Termination, reference: float) -> complex:
-    words = {"matched": reference, "open": OPEN * reference, "short": 0.0}
-    if isinstance(wanted, str):
-        if wanted not in words:
-            raise InputError(
-                f"termination '{wanted}'.", where="terminations", hint=nearest(wanted, words),
-                allowed="'matched', 'open', 'short' or an impedance in ohm",
-            )  # fmt: skip
-        return complex(words[wanted])
-    value = complex(wanted)
-    if np.isinf(value):
-        return complex(words["open"])
-    if np.isnan(value) or value.real < 0:
-        raise InputError(f"termination of {value} ohm.", where="terminations", allowed="a resistance of 0 or more")
-    return value

@@ -149,52 +149,57 @@ def exact_lags(model: ReducedModel, k: float, rho: Floats) -> Complexes:
     """X of the exact waves, under the analytic window in stacks, between cells rho (n, 2) apart, m; (n, r, r)."""
     view, r = model.view, model.size
     distance, angle = np.linalg.norm(rho, axis=1), np.arctan2(rho[:, 1], rho[:, 0])
-    near = np.round(distance / max(distance.max(), 1e-300), 10)
-    _, first, ring = np.unique(near, return_index=True, return_inverse=True)
-    radii = distance[first]
+    _, first, ring = np.unique(
+        np.round(distance / max(distance.max(), 1e-300), 10), return_index=True, return_inverse=True
+    )
+    radii, members = distance[first], np.split(np.argsort(ring, kind="stable"), np.cumsum(np.bincount(ring))[:-1])
     singular = [k, *(k * wave.beta.real for wave in (guided_waves(view.stack, k) if view.stack is not None else []))]
     table = _PolarTransforms(model.exact.transforms, view.cloud.points, view.window.high)
     nodes, weights = radial_contour(view.window.high, singular, float(distance.max()), 4 * table.size)
-    result = np.zeros((len(rho), r * r), dtype=complex)
-    for some, harmonics in _harmonics(view, table, k, nodes, r):
-        orders = table.orders
-        highest = int(np.abs(orders).max())
-        bessel = bessel_table(highest, radii[:, None] * nodes[some])
+    upper = np.triu_indices(r)
+    halves = np.zeros((2, len(rho), len(upper[0])), dtype=complex)  # even orders are symmetric, odd ones antisymmetric
+    for some, harmonics in _harmonics(view, table, k, nodes, upper):
+        bessel = bessel_table(table.angles // 2, radii[:, None] * nodes[some])
         bessel *= (view.lattice.area / (2 * np.pi)) * weights[some] * nodes[some]
-        loudest = np.abs(harmonics).max(axis=(0, 2))
-        for n in range(highest + 1):
-            for signed in {n, -n}:
-                at = signed % len(orders)
-                if loudest[at] > NEGLIGIBLE * loudest.max():
-                    radial = bessel[n] @ np.ascontiguousarray(harmonics[:, at])  # J_-n j^-n = J_n j^n
-                    result += (1j**n * np.exp(1j * signed * angle))[:, None] * radial[ring]
-    return result.reshape(len(rho), r, r)
+        loudest = np.abs(harmonics).max(axis=(1, 2))
+        for parity in (0, 1):
+            n = table.orders[(table.orders % 2 == parity) & (loudest > NEGLIGIBLE * loudest.max())]
+            turns = 1j ** np.abs(n) * np.exp(1j * np.outer(angle, n))
+            step = max(1, int(CHUNK_BYTES / (16 * len(n) * len(upper[0]) + 1)))
+            for start in range(0, len(radii), step):
+                radial = bessel[np.abs(n), start : start + step] @ harmonics[n]  # J_-n j^-n = J_n j^n
+                for i, mine in enumerate(members[start : start + step]):
+                    halves[parity, mine] += turns[mine] @ radial[:, i]
+    result = np.zeros((len(rho), r, r), dtype=complex)
+    result[:, upper[1], upper[0]] = halves[0] - halves[1]
+    result[:, upper[0], upper[1]] = halves[0] + halves[1]
+    return result
 
 
 def _harmonics(
-    view: CellView, table: _PolarTransforms, k: float, nodes: Complexes, r: int
+    view: CellView, table: _PolarTransforms, k: float, nodes: Complexes, upper: tuple[Ints, Ints]
 ) -> Iterator[tuple[slice, Complexes]]:
-    """G_n of some nodes at a time, (n_node, n_angle, r^2), angular order n at index n modulo n_angle."""
-    angles = table.angles
-    size = 16 * angles * (3 * r * r + 4 * table.width * r)
-    step = max(1, int(CHUNK_BYTES / size))
+    """G_n of some nodes at a time, its upper triangle (n_angle, n_node, n_upper), order n at index n modulo n_angle."""
+    angles, r = table.angles, int(upper[0].max()) + 1
+    step = max(1, int(CHUNK_BYTES / (16 * angles * (2 * r * r + 4 * table.width * r))))
     for start in range(0, len(nodes), step):
         some = slice(start, min(start + step, len(nodes)))
         square = nodes[some] ** 2
-        weight = (
-            np.ones(len(square)) if view.stack is None else AnalyticWindow(view.window.low, view.window.high)(square)
-        )
+        weight = np.ones(len(square), dtype=complex)
+        if view.stack is not None:
+            weight = AnalyticWindow(view.window.low, view.window.high)(square)
         plus = table.at(nodes[some])
-        minus = [np.roll(field, -(angles // 2), axis=1) for field in plus]  # at -k: the opposite angle
-        forms = np.zeros((len(square), angles, r, r), dtype=complex)
+        forms = np.zeros((len(square), angles // 2, r, r), dtype=complex)
         for (a, b), entries in couplings(view.exact, k, square).items():  # type: ignore[arg-type]
             for row, column, kernel, factor in entries:
                 rows, columns = table.components[a], table.components[b]
                 if row in rows and column in columns:
-                    right = plus[b][:, :, columns.index(column)]
+                    right = plus[b][:, : angles // 2, columns.index(column)]
+                    left = plus[a][:, angles // 2 :, rows.index(row)]  # at -k: the opposite angle
                     applied = (factor * weight)[:, None, None, None] * (kernel[:, None] @ right)
-                    forms += minus[a][:, :, rows.index(row)].swapaxes(2, 3) @ applied
-        yield some, np.fft.fft(forms, axis=1).reshape(len(square), angles, r * r) / angles
+                    forms += left.swapaxes(2, 3) @ applied
+        whole = np.concatenate([forms[:, :, *upper], forms[:, :, *upper[::-1]]], axis=1)  # -k transposes
+        yield some, np.ascontiguousarray(np.fft.fft(whole.transpose(1, 0, 2), axis=0)) / angles
 
 
 def transforms_at(transforms: ModeTransforms, points: Floats) -> list[Complexes]:
