@@ -10,8 +10,12 @@ import pytest
 from scanward.cases.expect import compare
 from scanward.cases.read import read_case
 from scanward.cases.run import run_case
+from scanward.solver.greedy import build_reduced
+from scanward.solver.network import port_response
 from scanward.solver.result import ScanPoints
-from scanward.solver.sweep import solve_sweep
+from scanward.solver.snapshots import take_snapshot
+from scanward.solver.sweep import CellSolver, solve_sweep, wavenumber
+from scanward.solver.training import random_points
 
 CASES = sorted((Path(__file__).parents[1] / "cases").glob("*.toml"))
 
@@ -47,3 +51,19 @@ def test_stated_error_covers_a_much_finer_mesh(name, tmp_path):
     coarse = solve_sweep(job.cell, frequency, scan).scattering[..., 0, 0]
     fine = solve_sweep(job.remesh(1 / 3), frequency, scan).scattering[..., 0, 0]
     assert np.abs(fine - coarse).max() < accuracy.reflection
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("path", CASES, ids=lambda p: p.stem)
+def test_reduced_model_keeps_its_stated_error(path):
+    """SECOND METHOD: full solutions at 200 random points of the band and of all visible space."""
+    job = read_case(path)
+    band = (float(job.frequency[0]), float(job.frequency[-1]))
+    solver = CellSolver(job.cell, band[1], job.tolerance)
+    model, certificate = build_reduced(solver, band, error=job.reduced_error or 1e-4)
+    assert certificate.reached
+    for frequency, u, v in random_points(band, 1.0, 200, np.random.default_rng(23)):
+        true = port_response(take_snapshot(solver, frequency, u, v).admittance[0], solver.reference).scattering
+        k = wavenumber(frequency)
+        found = model.solve(k, k * np.array([[u, v]])).scattering[0]
+        assert np.abs(found - true).sum(axis=1).max() <= certificate.stated
