@@ -126,18 +126,23 @@ def limit_rows(job: Job) -> Rows:
 
 def cost_rows(job: Job) -> Rows:
     cost = estimate_cost(job)
+    grid = f"{len(job.frequency)} frequencies x {len(job.scan.points)} directions"
+    solutions = f"{cost.solutions} ({grid})"
+    if cost.cheap:
+        solutions = f"about {cost.solutions} in full; {grid} and the survey, about {cost.cheap} points, from their span"
     return [
         ("unknowns", str(cost.unknowns)),
-        (
-            "solutions",
-            f"{cost.solutions} ({len(job.frequency)} frequencies x {len(job.scan.points)} directions)",
-        ),
+        ("solutions", solutions),
         (
             "time",
             f"about {duration(cost.seconds)}, and {duration(cost.estimate_seconds)} for the error estimate",
         ),
         ("memory", f"about {_bytes(cost.memory)}, and {_bytes(cost.estimate_memory)} for the error estimate"),
-        ("", f"scaled from one timed solution of {cost.trial} unknowns on this machine; rough, within a factor of 2"),
+        (
+            "",
+            f"scaled from one timed solution of {cost.trial} unknowns on this machine; rough, within a factor of "
+            f"{3 if cost.cheap else 2}",
+        ),
     ]
 
 

@@ -1,5 +1,8 @@
 """What a run will take, before it is started: unknowns, time, memory.
 
+A run by the reduced model takes some tens of full solutions and then many cheap points, of the case itself and of the
+survey; their cost hangs on the cell's kind more than on its unknowns (constants measured on the ready-made cases).
+
 One solution of the cell itself is timed when it is small, else one of a coarser mesh of it. Filling,
 assembling and stored memory grow as the square of the unknowns, factorisation as the cube; factorisation
 is timed apart.
@@ -20,15 +23,26 @@ from ..solver.result import ScanPoints
 from .accuracy import RATIOS
 from .engine import DirectEngine, EngineFactory, memory_needed
 from .job import Job
+from .scan_survey import map_frequencies
 
 LARGEST_TRIAL = 600
 """Unknowns of the largest cell that is solved as a trial: a few seconds."""
 SAMPLES = 10
+FULL_SOLUTIONS = 22
+"""Of a reduced model, held-back ones included; measured on the ready-made cases: 12 to 28."""
+PROJECTION = 2.0
+"""Times the full solutions themselves that making the model takes."""
+SURVEY_POINTS = 9000
+"""Points of the survey at each frequency of the maps: map, peaks, clear cone."""
+POINT_SECONDS = {"air": 1.2e-4, "layers": 2.5e-4, "upright conductors": 1.2e-3, "upright conductors in layers": 2e-3}
+"""One point of the reduced model, by the cell's kind."""
 
 
 @dataclass(frozen=True)
 class Cost:
-    """Unknowns, number of solutions, seconds for the solutions and for the error estimate, bytes at the peak.
+    """Unknowns, number of full solutions, seconds for all solutions and for the error estimate, bytes at the peak.
+
+    `cheap`: points answered by the reduced model, 0 for direct runs.
 
     `trial`: unknowns of the solution that was timed; the further below `unknowns`, the rougher the figures.
     """
@@ -40,6 +54,7 @@ class Cost:
     memory: float
     estimate_memory: float
     trial: int
+    cheap: int = 0
 
 
 @dataclass(frozen=True)
@@ -66,16 +81,34 @@ def estimate_cost(job: Job, engine: EngineFactory = DirectEngine) -> Cost:
     """Expected cost of `run_case` for `job`; takes a few seconds."""
     n = count_unknowns(job.cell)
     trial = run_trial(job, _trial_cell(job, n), engine)
-    finer, solutions = round(n * _growth(job)), len(job.frequency) * len(job.scan.points)
+    finer, points = round(n * _growth(job)), len(job.frequency) * len(job.scan.points)
+    if job.reduced_error is None:
+        solutions, cheap, seconds = points, 0, trial.seconds(n, points)
+    else:
+        solutions, cheap = FULL_SOLUTIONS, points + SURVEY_POINTS * len(map_frequencies(job))
+        seconds = trial.seconds(n, round(solutions * PROJECTION)) + cheap * POINT_SECONDS[cell_kind(job.cell)]
     return Cost(
         unknowns=n,
         solutions=solutions,
-        seconds=trial.seconds(n, solutions),
+        seconds=seconds,
+        cheap=cheap,
         estimate_seconds=trial.seconds(finer, SAMPLES),
         memory=trial.memory(n),
         estimate_memory=trial.memory(finer),
         trial=trial.unknowns,
     )
+
+
+def cell_kind(cell: UnitCell) -> str:
+    """Key of POINT_SECONDS."""
+    layered = cell.stack is not None and not cell.stack.is_air
+    mesh = cell.mesh
+    edges = np.concatenate([mesh.segments.reshape(-1, 2), mesh.triangles.reshape(-1, 3)[:, :2]])
+    edges = np.concatenate([edges, mesh.triangles.reshape(-1, 3)[:, 1:]])
+    upright = bool(np.any(np.abs(np.diff(mesh.points[edges, 2], axis=1)) > 1e-9 * np.ptp(mesh.points)))
+    if upright:
+        return "upright conductors in layers" if layered else "upright conductors"
+    return "layers" if layered else "air"
 
 
 def count_unknowns(cell: UnitCell) -> int:

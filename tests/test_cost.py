@@ -1,8 +1,11 @@
 """Expected cost: growth laws and the choice of the cell that is timed."""
 
+import dataclasses
+
 import numpy as np
 import pytest
 from scanward.cases import cost
+from scanward.geometry.stack import Layer, Stack
 from synthetic import sheet_job
 
 
@@ -34,3 +37,32 @@ def test_estimate_counts_unknowns_and_solutions():
     assert found.unknowns == cost.count_unknowns(job.cell)
     assert found.solutions == 3 * len(job.scan.points) and found.trial == 40
     assert found.seconds > 0 and found.estimate_memory > found.memory > 0
+
+
+def test_a_reduced_run_counts_full_solutions_and_cheap_points():
+    class Quick:
+        unknowns, stored_bytes = 40, 1e5
+
+        def __init__(self, *_):
+            pass
+
+        def solve(self, *_):
+            pass
+
+    job = dataclasses.replace(sheet_job(), reduced_error=1e-4)
+    found, direct = cost.estimate_cost(job, Quick), cost.estimate_cost(sheet_job(), Quick)
+    assert found.solutions == cost.FULL_SOLUTIONS and direct.cheap == 0
+    assert found.cheap == direct.solutions + 3 * cost.SURVEY_POINTS
+    assert found.seconds > found.cheap * cost.POINT_SECONDS["upright conductors"]
+
+
+def test_kinds_of_cells():
+    job = sheet_job()  # a strip and a post
+    assert cost.cell_kind(job.cell) == "upright conductors"
+    stack = Stack((Layer(14e-3, 2.55),), True)
+    assert cost.cell_kind(dataclasses.replace(job.cell, stack=stack)) == "upright conductors in layers"
+    mesh = dataclasses.replace(job.cell.mesh, segments=np.zeros((0, 2), dtype=int), segment_radius=np.zeros(0),
+                               segment_conductor=np.zeros(0, dtype=int))  # fmt: skip
+    flat = dataclasses.replace(job.cell, mesh=mesh)
+    assert cost.cell_kind(flat) == "air"
+    assert cost.cell_kind(dataclasses.replace(flat, stack=stack)) == "layers"
