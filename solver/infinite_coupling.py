@@ -31,6 +31,7 @@ FIRST_ORDER = 6
 GROWTH = 1.5
 NODES_PER_PERIOD = 4.0  # further nodes for every period of exp(j k_t . rho) across a piece
 LONGEST = 0.25  # of a piece, as a share of the zone
+SAFETY = 3.0  # stated error over the change by the last refinement
 SAME = 1e-7  # cuts closer than this are one
 
 
@@ -42,7 +43,7 @@ class InfiniteCouplings:
     ----------
     offsets : (n, 2) cells m, in the case's own lattice; `positions` : (n, 2) m
     scattering : (n, n_port, n_port), from the ports of cell m (second index) to those of the home cell (first)
-    error : largest change of any coefficient by the last refinement, which the coefficients err by less than
+    error : stated error of every coefficient, SAFETY times the largest change by the last refinement
     points : directions at which the active scattering matrix was worked out, in all
     """
 
@@ -71,7 +72,7 @@ def infinite_couplings(
     ----------
     model : ReducedModel trained over the whole Brillouin zone (`array_basis.build_array_model`)
     frequency : Hz, within its band
-    error : wanted largest change by the last refinement
+    error : wanted error of every coefficient
     limit : directions at most; beyond, the error reached so far is stated
     """
     k = 2 * np.pi * frequency / SPEED_OF_LIGHT
@@ -82,9 +83,9 @@ def infinite_couplings(
             rule.refine()
     best = min(rules, key=lambda rule: rule.change)
     total = sum(rule.points for rule in rules)
-    while best.change > error and total + best.next_points() <= limit:
+    while SAFETY * best.change > error and total + best.next_points() <= limit:
         total += best.refine()
-    return InfiniteCouplings(offsets, model.cell.lattice.positions(offsets), best.value, best.change, total)
+    return InfiniteCouplings(offsets, model.cell.lattice.positions(offsets), best.value, SAFETY * best.change, total)
 
 
 class _Refined:
