@@ -66,6 +66,12 @@ class Fit:
         return port_gain(prediction.frequency, self.delay, self.loss)
 
 
+def cheapest(fits: tuple[Fit, ...]) -> int:
+    """Which fit has the least Bayesian information criterion, the misfit scaled to that of the last, richest model."""
+    over = max(1.0, fits[-1].reduced)
+    return int(np.argmin([f.chi_squared / over + np.log(max(f.count, 2)) * f.freedom for f in fits]))
+
+
 def middle(frequency: Floats) -> float:
     """Middle of the band, Hz: where losses are stated."""
     return float((frequency[0] + frequency[-1]) / 2)
