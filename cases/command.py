@@ -169,17 +169,21 @@ def ask_result(result: str, places: tuple[str, ...], port: str | None, table: st
 
     asked = [parse_place(text, "--at") for text in places]
     path = Path(result)
-    rows = answers(load_result(path / "result.nc" if path.is_dir() else path), asked, port)
+    loaded = load_result(path / "result.nc" if path.is_dir() else path)
+    rows = answers(loaded, asked, port)
+    code = NOT_REACHED if loaded.failure else 0
+    if code:
+        click.echo(f"scanward: do not use these numbers: {loaded.failure}", err=True)
     if table is None:
         click.echo("\n".join(answer_text(row) for row in rows))
-        return 0
+        return code
     text = io.StringIO()
     csv.writer(text, lineterminator="\n").writerows(answer_table(rows))
     if table == "-":
         click.echo(text.getvalue(), nl=False)
     else:
         _writable(lambda: Path(table).write_text(text.getvalue(), encoding="utf-8"), Path(table))
-    return 0
+    return code
 
 
 @cli.command("cases")
@@ -264,6 +268,7 @@ def _progress(quiet: bool) -> Any:
 
 def _show_outcome(outcome: Outcome, files: list[Path]) -> None:
     """The verdict in words, the files, and nothing that the report says better."""
+    from .bench_text import bench_facts
     from .judge import degrees, number
     from .report import error_text, headline, margin_text
     from .survey_text import blindness_summary, signed_rows
@@ -290,8 +295,11 @@ def _show_outcome(outcome: Outcome, files: list[Path]) -> None:
         for name, text in signed_rows(outcome.result)[1:5]:
             click.echo(f"{name[0].lower()}{name[1:]}: {text}")
         click.echo(f"blindness: {blindness_summary(outcome.result)}")
+    for name, text in bench_facts(outcome.result)[:3]:
+        click.echo(f"breadboard, {name[0].lower()}{name[1:]}: {text}")
     if outcome.result.certificate is not None:
-        click.echo(f"reduced model: {outcome.result.certificate}")
+        certificate = outcome.result.certificate
+        click.echo(f"reduced model: {certificate} ({certificate.full_solutions} full solutions in all)")
     for path in files:
         if path.suffix in (".nc", ".html", ".vtu") or path.name == "index.csv":
             click.echo(f"  {path}")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from .bench_charts import bench_figures
 from .charts import reflection_chart, scan_maps
 from .cuts import band, cross_polar_cuts, gain_cuts, power_cuts, reflection_cuts
 from .drawing import cell_drawing, lattice_diagram
@@ -25,6 +26,7 @@ def draw_all(result: Result) -> tuple[Drawing, ...]:
         gain_cuts(result),
         cross_polar_cuts(result),
         power_cuts(result),
+        *bench_figures(result),
         lattice_diagram(result.job),
         cell_drawing(result.job.cell),
         stack_drawing(result.job.cell),

@@ -70,6 +70,32 @@ class Expectation:
 
 
 @dataclass(frozen=True)
+class Breadboard:
+    """The finite array that will be built.
+
+    Attributes
+    ----------
+    cells : (n, 2) integer cells m, n at ``m a + n b`` that carry an element
+    dummy : (n,) whether its ports are terminated and not led out
+    termination : "matched", "open" or "short", of the dummies
+    frequency : (n_freq,) Hz
+    taper : (n,) amplitudes of the excitation
+    alike : largest |difference| of the centre's active reflection with which the array counts as large enough
+    largest : side of the largest square array tried for that
+    error : wanted error of every scattering parameter
+    """
+
+    cells: Ints
+    dummy: NDArray[np.bool_]
+    termination: str
+    frequency: Floats
+    taper: Floats
+    alike: float
+    largest: int
+    error: float
+
+
+@dataclass(frozen=True)
 class Job:
     """One case, resolved.
 
@@ -88,6 +114,7 @@ class Job:
     expect : numbers of the `[expect]` table
     reduced_error : wanted error of a reduced model's active reflection; None: direct solution of every point
     expected_to_fail : whether the case is a ready-made one that shows a failure
+    breadboard : the finite array to predict; None for none
     element_size : target edge length of the mesh, m
     remesh : callable(factor) -> UnitCell with element size multiplied by `factor` (for the error estimate)
     """
@@ -107,3 +134,4 @@ class Job:
     expect: tuple[Expectation, ...] = field(default_factory=tuple)
     expected_to_fail: bool = False
     reduced_error: float | None = None
+    breadboard: Breadboard | None = None

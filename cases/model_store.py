@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     import xarray
 
 MODEL, CERTIFICATE, MAP, BLINDNESS, FREE_CONE = "reduced", "certificate", "map", "blindness", "free_cone"
+BENCH = "breadboard"
 PEAK_NUMBERS = ("frequency", "u", "v", "port", "width", "radiated", "lobes")
 
 
@@ -33,6 +34,10 @@ def to_groups(result: Result) -> dict[str, xarray.Dataset]:
         groups[MAP] = _map(result.survey)
         groups[BLINDNESS] = _blindness(result.survey.blindnesses, len(result.port_names), result.sweep.loss_names)
         groups[FREE_CONE] = _free_cone(result.survey.free_cone)
+    if result.bench is not None:
+        from .bench_store import bench_dataset
+
+        groups[BENCH] = bench_dataset(result.bench)
     for data in groups.values():
         for name in data.variables:
             if data[name].size > 4096:
@@ -56,6 +61,10 @@ def with_groups(result: Result, path: Path) -> Result:
         maps, error = _read_map(data[MAP])
         cone = _read_free_cone(data[FREE_CONE])
         result = replace(result, survey=Survey(maps, _read_blindness(data[BLINDNESS]), cone, error))
+    if BENCH in data:
+        from .bench_store import read_bench
+
+        result = replace(result, bench=read_bench(data[BENCH]))
     return result
 
 

@@ -18,12 +18,13 @@ from ..geometry.placement import place_gap
 from ..geometry.port import Load, Port
 from ..geometry.stack import Stack
 from . import build
+from .bench_plan import build_breadboard
 from .fields import Values, read_table, write_table
 from .job import Expectation, Job, ScanPlan
 from .layers import build_stack, check_conductors, check_sheets, refuse_endless, sized
 from .quantity import SPEED_OF_LIGHT, Quantities
 from .scan_plan import build_scan_plan
-from .schema import CONDUCTORS, MOST_SOLUTIONS, MOST_TABLES, NOT_YET, REPEATED, SINGLE, STEEPEST, TOP, Table
+from .schema import CONDUCTORS, MOST_SOLUTIONS, MOST_TABLES, REPEATED, SINGLE, STEEPEST, TOP, Table
 
 LARGEST_FILE = 5_000_000  # bytes
 ELEMENTS_PER_WAVELENGTH = 20.0
@@ -82,6 +83,8 @@ def parse_case(text: str, *, path: Path | None = None, overrides: Mapping[str, s
     quantities = Quantities(_plain_table(raw, "parameters"), overrides)
     top = read_table({name: value for name, value in raw.items() if name in TOP.keys}, TOP, "top level", quantities)
     single = {name: _single(raw, name, table, quantities) for name, table in SINGLE.items()}
+    if "breadboard" not in raw:
+        single["breadboard"] = dict.fromkeys(single["breadboard"])
     repeated = {name: _repeated(raw, name, quantities) for name in REPEATED}
     build.check_names(repeated)
     if not repeated["conductor"]:
@@ -110,6 +113,7 @@ def parse_case(text: str, *, path: Path | None = None, overrides: Mapping[str, s
         expect=expect,
         expected_to_fail=top["expected_verdict"] == "failed",
         reduced_error=single["accuracy"]["reduced_error"] if single["accuracy"]["solver"] == "reduced" else None,
+        breadboard=build_breadboard(single["breadboard"], draft.frequencies) if "breadboard" in raw else None,
     )
 
 
@@ -127,8 +131,6 @@ def _parse_toml(text: str) -> dict[str, object]:
 def _check_tables(raw: Mapping[str, object]) -> None:
     known = [*TOP.keys, "parameters", *SINGLE, *REPEATED]
     for name, value in raw.items():
-        if name in NOT_YET:
-            raise InputError(NOT_YET[name], where=f"[[{name}]]" if isinstance(value, list) else f"[{name}]")
         if name not in known:
             kind = "table" if isinstance(value, (dict, list)) else "key"
             raise InputError(

@@ -12,7 +12,7 @@ import numpy as np
 from ..geometry.conductor import Material
 from ..geometry.port import Gap, Load, Port
 from ..geometry.stack import Layer, SheetImpedance, Stack
-from .job import Expectation, Job, Limit
+from .job import Breadboard, Expectation, Job, Limit
 
 
 def job_record(job: Job) -> str:
@@ -34,6 +34,7 @@ def job_record(job: Job) -> str:
             "co_polar_angle": job.co_polar_angle,
             "element_size": job.element_size,
             "expected_to_fail": job.expected_to_fail,
+            "breadboard": None if job.breadboard is None else _plain(asdict(job.breadboard)),
         }
     )
 
@@ -47,9 +48,17 @@ def read_record(text: str) -> dict[str, Any]:
     record["loads"] = tuple(Load(**{**load, "gap": _gap(load["gap"])}) for load in record["loads"])
     record["materials"] = tuple(Material(**material) for material in record["materials"])
     record["stack"] = _stack(record.get("stack"))  # files of version 0.1.0 have none
+    record["breadboard"] = _breadboard(record.get("breadboard"))
     record["limits"] = tuple(Limit(**limit) for limit in record["limits"])
     record["expect"] = tuple(Expectation(**expectation) for expectation in record["expect"])
     return record
+
+
+def _breadboard(board: dict[str, Any] | None) -> Breadboard | None:
+    if board is None:
+        return None
+    kinds = {"cells": np.int64, "dummy": bool, "frequency": float, "taper": float}
+    return Breadboard(**{**board, **{name: np.array(board[name], dtype=kind) for name, kind in kinds.items()}})
 
 
 def _stack(stack: dict[str, Any] | None) -> Stack | None:

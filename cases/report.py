@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 
 from ..solver.pattern import LIGHT_SPEED, decibel
+from .bench_text import bench_facts, coupling_rows, guide_rows
 from .expect import compare
 from .interactive import interactive_map
 from .job import Job
@@ -61,6 +62,10 @@ def report_text(result: Result, figures: Sequence[Drawing]) -> str:
         surveyed=result.survey is not None,
         searched="" if result.survey is None else searched_text(result.survey),
         harm=HARM if any(item.inside for item in blindness_texts(result)) else "",
+        bench=bench_facts(result),
+        bench_couplings=coupling_rows(result),
+        bench_guides=guide_rows(result),
+        bench_guide_note="" if result.bench is None else result.bench.guide_note,
         facts=_facts(result),
         accuracy=_accuracy(result),
         comparisons=[_comparison_row(item) for item in compare(result)],

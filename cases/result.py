@@ -21,6 +21,7 @@ from .job import Job
 if TYPE_CHECKING:
     from ..solver.greedy import Certificate
     from ..solver.reduced import ReducedModel
+    from .bench import Bench
 
 Floats = NDArray[np.float64]
 
@@ -81,6 +82,7 @@ class Result:
     certificate : of the reduced model; None where every point was solved directly, as are
     survey : what was found over the whole scan volume, and
     stored : the reduced model, or its arrays as read from a file; `model` makes one of them
+    bench : prediction of the finite breadboard; None where the case has none
     """
 
     job: Job
@@ -91,6 +93,7 @@ class Result:
     certificate: Certificate | None = None
     survey: Survey | None = None
     stored: ReducedModel | dict[str, NDArray] | None = None
+    bench: Bench | None = None
 
     @cached_property
     def model(self) -> ReducedModel | None:

@@ -13,6 +13,8 @@ import numpy as np
 from ..geometry.cell import UnitCell
 from ..solver.result import ScanPoints, Sweep
 from . import accuracy
+from .bench import check_bench, predict_bench
+from .bench_store import write_bench
 from .engine import DirectEngine, Engine, EngineFactory, memory_free, memory_needed
 from .export import write_tables
 from .figures import draw_all
@@ -20,7 +22,7 @@ from .job import Job
 from .judge import Verdict, judge
 from .partial import PartialRun, join_frequencies
 from .progress import Progress, Silent
-from .reduced_engine import ReducedEngine, certificate_note, reduced_factory
+from .reduced_engine import ReducedEngine, certificate_note, drive_ratios, reduced_factory
 from .report import write_report
 from .result import Accuracy, Provenance, Result, peak_memory, versions
 from .scan_survey import survey_job
@@ -64,6 +66,7 @@ def run_case(
     out_dir = Path(out_dir)
     out_dir.mkdir(parents=True, exist_ok=True)
     kept = PartialRun(out_dir / PARTIAL_FOLDER, job)
+    check_bench(job)
     begun = time.monotonic()
     told: Progress = progress if progress is not None else Silent()
     with told:
@@ -73,6 +76,9 @@ def run_case(
             sweep = solve_frequencies(job, solver, kept, told)
             result, shortfall = _surveyed(Result(job, sweep, Accuracy(), Provenance(versions())), solver, told)
             failure = check_sweep(job, result.sweep, result) or shortfall
+            if job.breadboard is not None and isinstance(solver.engine, DirectEngine) and not failure:
+                result = replace(result, bench=predict_bench(job, solver.engine.solver, told))
+                failure = bench_shortfall(result)
             estimate = _estimate(result, solver, told, engine) if refine and not failure else _none(failure)
         except KeyboardInterrupt:
             return _interrupted(job, kept)
@@ -111,10 +117,19 @@ def _surveyed(result: Result, solver: _Lazy, told: Progress) -> tuple[Result, st
     model = solver.engine.build()
     certificate = solver.engine.certificate
     assert certificate is not None
-    sweep = replace(result.sweep, notes=(*result.sweep.notes, certificate_note(certificate)))
-    survey = survey_job(result.job, model, certificate.stated, told)
+    spread = float(np.nanmax(drive_ratios([port.drive for port in result.job.cell.ports])))
+    sweep = replace(result.sweep, notes=(*result.sweep.notes, certificate_note(certificate, spread)))
+    survey = survey_job(result.job, model, certificate.stated * spread, told)
     result = replace(result, sweep=sweep, certificate=certificate, survey=survey, stored=model)
     return result, "" if certificate.reached else f"the reduced model did not reach its accuracy: {certificate}"
+
+
+def bench_shortfall(result: Result) -> str:
+    """Why the prediction of the breadboard cannot be trusted; empty when it can."""
+    bench = result.bench
+    if bench is None or bench.certificate.reached:
+        return ""
+    return f"the prediction of the breadboard did not reach its accuracy: {bench.certificate}"
 
 
 def check_sweep(job: Job, sweep: Sweep, result: Result) -> str:
@@ -169,7 +184,8 @@ def write_views(out_dir: Path, result: Result) -> tuple[Path, ...]:
         files[-1].write_bytes(figure.data)
     report = out_dir / REPORT_FILE
     write_report(report, result, figures)
-    return (*write_tables(out_dir, result), *files, report)
+    board = () if result.bench is None else write_bench(out_dir, result)
+    return (*write_tables(out_dir, result), *files, *board, report)
 
 
 class _Lazy:
@@ -237,13 +253,15 @@ def _none(failure: str) -> Accuracy:
 
 
 def _interrupted(job: Job, kept: PartialRun) -> Outcome:
-    count = kept.count()
-    where = f" in {kept.folder}" if count else ""
+    count, snapshots = kept.count(), kept.load_snapshots()
+    done = f"{count} of {len(job.frequency)} frequencies"
+    if snapshots is not None:
+        done += f" and {len(snapshots)} full solutions for the reduced model"
+    where = f" in {kept.folder}" if count or snapshots is not None else ""
     return Outcome(
         INTERRUPTED,
         None,
-        message=f"interrupted: {count} of {len(job.frequency)} frequencies are finished and kept{where}; "
-        "the same command takes them up again",
+        message=f"interrupted: {done} are finished and kept{where}; the same command takes them up again",
     )
 
 

@@ -267,6 +267,26 @@ LIMITS = _table(
     cone=Key("angle", "Half-angle where the limits hold; default: the scan cone.", above=0.0, high=STEEPEST),
 )
 
+BREADBOARD = _table(
+    "[breadboard]",
+    "The finite array that will be built and measured; row i, column j stands at j a + i b.",
+    rows=Key("count", "Number of rows.", low=1, high=64),
+    columns=Key("count", "Number of columns.", low=1, high=64),
+    missing=Key("count", "Elements left out, [row, column] counted from 0.", shape=("n", 2)),
+    cells=Key("count", "Instead of rows and columns: all cells [m, n] that carry an element, at m a + n b.",
+              shape=("n", 2)),
+    rim=Key("count", "Rings of outermost elements that are dummies.", default=0, low=0, high=8),
+    termination=Key("choice", "What the dummies' ports end in.", choices=("matched", "open", "short"),
+                    default="matched"),
+    points=Key("count", "Frequencies over the band at which the array is solved.", low=1, high=101),
+    edge_taper=Key("level", "Level of the outermost elements in the excitation, cosine on a pedestal; 0 dB: uniform.",
+                   default="0 dB", low=-60.0, high=0.0),
+    alike=Key("ratio", "Largest difference between the centre element's active reflection and that of the infinite "
+              "array with which the array counts as large enough.", default=0.05, above=0.0, high=1.0),
+    largest=Key("count", "Largest square array tried for that.", default=15, low=3, high=31),
+    error=Key("ratio", "Wanted error of every scattering parameter.", default=1e-4, low=1e-8, high=1e-2),
+)  # fmt: skip
+
 EXPECTED: Mapping[str, str] = MappingProxyType({
     "resistance": "resistance", "reactance": "resistance", "reflection": "level", "gain": "level",
     "cross_polar": "level", "axial_ratio": "level", "efficiency": "ratio",
@@ -287,11 +307,8 @@ EXPECT = _table(
 
 SINGLE: Mapping[str, Table] = MappingProxyType({
     "band": BAND, "lattice": LATTICE, "scan": SCAN, "polarisation": POLARISATION, "mesh": MESH,
-    "accuracy": ACCURACY, "limits": LIMITS,
+    "accuracy": ACCURACY, "limits": LIMITS, "breadboard": BREADBOARD,
 })  # fmt: skip
 REPEATED: Mapping[str, Table | Mapping[str, Table]] = MappingProxyType({
     "layer": LAYER, "sheet": SHEET, "conductor": CONDUCTORS, "port": PORT, "load": LOAD, "expect": EXPECT,
-})  # fmt: skip
-NOT_YET: Mapping[str, str] = MappingProxyType({
-    "breadboard": "finite breadboards are not in this version.",
 })  # fmt: skip

@@ -137,4 +137,5 @@ def _job(value: dict[str, Any], record: dict[str, Any], scan: ScanPoints) -> Job
         remesh=None,
         expect=record["expect"],
         expected_to_fail=bool(record.get("expected_to_fail", False)),
+        breadboard=record["breadboard"],
     )

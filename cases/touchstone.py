@@ -109,6 +109,13 @@ def _comments(result: Result, s: int) -> str:
     return "\n".join(line.encode("ascii", "replace").decode().replace("\n", " ") for line in lines)
 
 
+def write_network(path: Path, frequency: Floats, scattering: Complexes, reference: Floats, comments: str) -> None:
+    """One Touchstone file of a matrix (n_freq, n, n) of any number of ports, renormalised to the first reference where
+    the references (n,) differ."""
+    common = float(reference[0])
+    _write_one(Path(path), frequency, renormalise(scattering, reference, common), common, comments)
+
+
 def _write_one(path: Path, frequency: Floats, scattering: Complexes, reference: float, comments: str) -> None:
     if not np.all(np.isfinite(scattering)):
         raise InputError(f"'{path.name}' would hold values that are not finite.", hint="See the report.")
