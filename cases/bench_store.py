@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from ..geometry.errors import InputError
 from ..solver.array_basis import ArrayCertificate
 from ..solver.result import ScanPoints
 from .bench import BUDGET, Bench, GuideRow, SizeRow
@@ -120,6 +121,31 @@ def write_bench(folder: Path, result: Result) -> tuple[Path, ...]:
         rows.append([n, int(bench.cells[cell, 1]), int(bench.cells[cell, 0]), names[port]])
     write_csv(Path(folder) / MAP_FILE, rows)
     return path, Path(folder) / MAP_FILE
+
+
+def prediction_of(path: Path) -> Prediction:
+    """From a result file or its folder, or a file that holds nothing but a prediction.
+
+    Raises
+    ------
+    InputError
+        If the file cannot be read, or is the result of a case without `[breadboard]`.
+    """
+    from .prediction_store import is_prediction, load_prediction
+    from .store import load_result
+
+    path = Path(path) / "result.nc" if Path(path).is_dir() else Path(path)
+    if is_prediction(path):
+        return load_prediction(path)
+    result = load_result(path)
+    if result.bench is None:
+        raise InputError(
+            "this result predicts no finite array.",
+            where=str(path),
+            allowed="results of cases with [breadboard]",
+            hint="Add [breadboard] with rows and columns to the case and run it again.",
+        )
+    return to_prediction(result)
 
 
 def to_prediction(result: Result) -> Prediction:

@@ -19,6 +19,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from ..geometry.errors import InputError
+from .compare_command import compare
 
 if TYPE_CHECKING:
     from .job import Job
@@ -184,6 +185,9 @@ def ask_result(result: str, places: tuple[str, ...], port: str | None, table: st
     else:
         _writable(lambda: Path(table).write_text(text.getvalue(), encoding="utf-8"), Path(table))
     return code
+
+
+cli.add_command(compare)
 
 
 @cli.command("cases")

@@ -93,9 +93,9 @@ def compare(
 
 def _load() -> Callable[[Path], Prediction]:
     """How a prediction is read from RESULT."""
-    from .prediction_store import load_prediction
+    from .bench_store import prediction_of
 
-    return load_prediction
+    return prediction_of
 
 
 def _uncertainty(magnitude: str, phase: str, floor: str) -> Uncertainty:

@@ -56,6 +56,17 @@ def save_prediction(path: Path, prediction: Prediction) -> None:
         temporary.unlink(missing_ok=True)
 
 
+def is_prediction(path: Path) -> bool:
+    """Whether a file holds a prediction alone, of any format; False where it cannot be read."""
+    import xarray
+
+    try:
+        with xarray.open_dataset(path, engine="h5netcdf") as data:
+            return ATTRIBUTE in data.attrs
+    except (OSError, ValueError, KeyError):
+        return False
+
+
 def load_prediction(path: Path) -> Prediction:
     """Read what `save_prediction` wrote.
 
