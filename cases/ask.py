@@ -10,10 +10,12 @@ from numpy.typing import ArrayLike, NDArray
 
 from ..geometry.errors import InputError
 from ..solver.pattern import co_cross, decibel, respond
+from ..solver.reduced import ReducedModel
 from ..solver.reduced_sweep import reduced_sweep
 from ..solver.result import ScanPoints, Sweep
 from ..solver.sweep import wavenumber
 from .judge import degrees
+from .reduced_engine import drive_ratios
 from .result import Result
 
 Floats = NDArray[np.float64]
@@ -31,23 +33,56 @@ def ask(result: Result, frequency: ArrayLike, scan: ScanPoints) -> Sweep:
 
     Returns
     -------
-    Sweep, axes (frequency, scan, port, port_in); its active reflection errs by ``result.certificate.stated`` against a
-    full solution on the same mesh
+    Sweep, axes (frequency, scan, port, port_in); against a full solution on the same mesh the scattering matrices err
+    by ``result.certificate.stated`` in their row sums of magnitudes, and active reflection as `active_error` says
 
     Raises
     ------
     InputError
-        If the result has no reduced model, or a frequency lies outside its band.
+        If the result has no reduced model, nothing is asked, or a frequency lies outside the model's band or a
+        direction outside what it was certified for.
     """
-    model = result.model
-    if model is None:
+    model = _model(result)
+    asked = _within_band(model, np.atleast_1d(np.asarray(frequency, dtype=float)))
+    _check_directions(result, scan)
+    return reduced_sweep(model, asked, scan)
+
+
+def active_error(result: Result) -> Floats:
+    """(n_port,) error of the active reflection under the case's own drive; NaN at ports that are not driven.
+
+    The certificate bounds the row sums of |dS|; ``Gamma_i = sum_j S_ij a_j / a_i`` errs by that times the largest drive
+    over the port's own.
+    """
+    if result.certificate is None:
+        return np.full(len(result.port_names), np.nan)
+    return result.certificate.stated * drive_ratios([port.drive for port in result.job.cell.ports])
+
+
+def _model(result: Result) -> ReducedModel:
+    if result.stored is None:
         raise InputError(
             "this result holds no reduced model, so that nothing new can be asked of it.",
             where="result file",
             allowed='results of runs with [accuracy] solver = "reduced", the default',
             hint='Run the case again without solver = "direct".',
         )
-    asked = np.atleast_1d(np.asarray(frequency, dtype=float))
+    try:
+        model = result.model
+    except (KeyError, ValueError) as fault:
+        raise InputError(
+            f"the reduced model of this result cannot be used here: {fault}.",
+            where="result file",
+            hint="It may come from another version of the program; run the case again.",
+        ) from None
+    assert model is not None
+    return model
+
+
+def _within_band(model: ReducedModel, asked: Floats) -> Floats:
+    """The frequencies (Hz), rounding at the ends of the band taken off."""
+    if not len(asked):
+        raise InputError("no frequency is asked for.", where="frequency", allowed="at least one")
     low, high = (k / wavenumber(1.0) for k in model.band)
     outside = asked[(asked < low * (1 - 1e-9)) | (asked > high * (1 + 1e-9)) | ~np.isfinite(asked)]
     if len(outside):
@@ -58,7 +93,20 @@ def ask(result: Result, frequency: ArrayLike, scan: ScanPoints) -> Sweep:
             allowed=band,
             hint="Run the case with a wider [band].",
         )
-    return reduced_sweep(model, np.clip(asked, low, high), scan)
+    return np.clip(asked, low, high)
+
+
+def _check_directions(result: Result, scan: ScanPoints) -> None:
+    """Visible space is certified in every run, invisible space as far out as the case itself went."""
+    radius, own = np.hypot(scan.u, scan.v), result.job.scan.points
+    certified = max(1.0, float(np.hypot(own.u, own.v).max()))
+    outside = ~(radius <= certified * (1 + 1e-9))
+    if outside.any() or not len(scan):
+        place = "no direction is asked for"
+        if len(scan):
+            first = int(np.argmax(outside))
+            place = f"u = {scan.u[first]:.6g}, v = {scan.v[first]:.6g} lies outside what the model was certified for"
+        raise InputError(f"{place}.", where="direction", allowed=f"sqrt(u^2 + v^2) up to {certified:.6g}")
 
 
 def answers(result: Result, places: Sequence[Place], port: str | None = None) -> list[dict[str, Any]]:
@@ -83,7 +131,7 @@ def _rows(result: Result, sweep: Sweep, names: list[str]) -> Iterable[dict[str, 
     response = respond(sweep, [one.drive for one in job.cell.ports], job.cell.lattice.area)
     co, cross = co_cross(response.field, sweep.scan.phi, job.co_polar, job.co_polar_angle)
     main = (response.orders == np.array([0, 0, 1])).all(axis=1)
-    error = np.nan if result.certificate is None else result.certificate.stated
+    error = active_error(result)
     for p, one in enumerate(job.cell.ports):
         if one.name in names:
             gamma = complex(response.reflection[0, 0, p])
@@ -103,7 +151,7 @@ def _rows(result: Result, sweep: Sweep, names: list[str]) -> Iterable[dict[str, 
                 "radiated": float(response.radiated[0, 0, main].sum()),
                 "lobes": float(response.radiated[0, 0, ~main].sum()),
                 "absorbed": dict(zip(sweep.loss_names, response.absorbed[0, 0].tolist(), strict=True)),
-                "error": error,
+                "error": float(error[p]),
             }
 
 

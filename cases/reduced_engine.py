@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 
 import numpy as np
+from numpy.typing import NDArray
 
 from ..geometry.cell import UnitCell
 from ..solver.greedy import Certificate, build_reduced
@@ -96,11 +97,20 @@ def reduced_factory(job: Job, kept: PartialRun, say: Say) -> Callable[..., Reduc
     return make
 
 
-def certificate_note(certificate: Certificate) -> str:
-    """The certificate in words, for the report."""
+def drive_ratios(drives: Sequence[complex]) -> NDArray[np.float64]:
+    """(n_port,) largest drive amplitude over each port's own, NaN at ports that are not driven: by so much the active
+    reflection of a port may err more than the row sums of the scattering matrix, which a certificate bounds."""
+    amplitudes = np.abs(np.asarray(drives, dtype=complex))
+    return amplitudes.max(initial=0.0) / np.where(amplitudes > 0, amplitudes, np.nan)
+
+
+def certificate_note(certificate: Certificate, spread: float = 1.0) -> str:
+    """The certificate in words, for the report; `spread`: largest of `drive_ratios`."""
+    uneven = "" if spread == 1 else f", times {spread:.3g} for the largest drive over the smallest,"
     return (
         f"Answers come from a reduced model of {certificate.snapshots} snapshots ({certificate.full_solutions} full "
         f"solutions in all). Error of the active reflection against the full solution of the same mesh: wanted "
         f"{certificate.wanted:.1e}, estimated {certificate.estimated:.1e}, confirmed {certificate.confirmed:.1e} by "
-        f"{len(certificate.errors)} full solutions at held-back points; to be counted with {certificate.stated:.1e}."
+        f"{len(certificate.errors)} full solutions at held-back points; to be counted with{uneven} "
+        f"{certificate.stated * spread:.1e}."
     )
