@@ -135,13 +135,13 @@ def cost_rows(job: Job) -> Rows:
         ("solutions", solutions),
         (
             "time",
-            f"about {duration(cost.seconds)}, and {duration(cost.estimate_seconds)} for the error estimate",
+            f"about {duration(cost.seconds)}, {duration(cost.estimate_seconds)} for the error estimate, and "
+            f"{duration(cost.writing_seconds)} for figures and report",
         ),
         ("memory", f"about {_bytes(cost.memory)}, and {_bytes(cost.estimate_memory)} for the error estimate"),
         (
             "",
-            f"scaled from one timed solution of {cost.trial} unknowns on this machine; rough, within a factor of "
-            f"{3 if cost.cheap else 2}",
+            f"scaled from one timed solution of {cost.trial} unknowns on this machine; rough, within a factor of 2",
         ),
     ]
 

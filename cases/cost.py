@@ -2,6 +2,7 @@
 
 A run by the reduced model takes some tens of full solutions and then many cheap points, of the case itself and of the
 survey; their cost hangs on the cell's kind more than on its unknowns (constants measured on the ready-made cases).
+Small cells are done so fast that figures and report count too.
 
 One solution of the cell itself is timed when it is small, else one of a coarser mesh of it. Filling,
 assembling and stored memory grow as the square of the unknowns, factorisation as the cube; factorisation
@@ -33,18 +34,30 @@ FULL_SOLUTIONS = 22
 PROJECTION = 2.0
 """Times the full solutions themselves that making the model takes."""
 SURVEY_POINTS = 9000
-"""Points of the survey at each frequency of the maps: map, peaks, clear cone."""
+"""Points of the survey at each frequency of the maps and for each driven port, whose maxima are sought one by one: map,
+peaks, clear cone; measured: 5000 to 16000."""
 POINT_SECONDS = {"air": 1.2e-4, "layers": 2.5e-4, "upright conductors": 1.2e-3, "upright conductors in layers": 2e-3}
 """One point of the reduced model, by the cell's kind."""
+WRITING_SECONDS = {"reduced": 8.0, "direct": 5.0}
+"""Figures, tables and report; more to draw after a survey."""
+PROGRAM_BYTES = 1.1e8
+"""Of the program with its packages, before anything is filled."""
+REDUCED_BYTES = 6e7
+"""Scratch of the reduced model: one batch of points."""
 
 
 @dataclass(frozen=True)
 class Cost:
-    """Unknowns, number of full solutions, seconds for all solutions and for the error estimate, bytes at the peak.
+    """What a run takes.
 
-    `cheap`: points answered by the reduced model, 0 for direct runs.
-
-    `trial`: unknowns of the solution that was timed; the further below `unknowns`, the rougher the figures.
+    Attributes
+    ----------
+    unknowns : of the cell
+    solutions : full ones; `cheap` : points answered by the reduced model, 0 for direct runs
+    seconds : for all solutions and the survey; `estimate_seconds` : for the error estimate on another mesh;
+        `writing_seconds` : for figures and report
+    memory, estimate_memory : bytes at the peak of each, the program included
+    trial : unknowns of the solution that was timed; the further below `unknowns`, the rougher the figures
     """
 
     unknowns: int
@@ -55,6 +68,7 @@ class Cost:
     estimate_memory: float
     trial: int
     cheap: int = 0
+    writing_seconds: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -82,10 +96,13 @@ def estimate_cost(job: Job, engine: EngineFactory = DirectEngine) -> Cost:
     n = count_unknowns(job.cell)
     trial = run_trial(job, _trial_cell(job, n), engine)
     finer, points = round(n * _growth(job)), len(job.frequency) * len(job.scan.points)
+    base, writing = PROGRAM_BYTES, WRITING_SECONDS["direct"]
     if job.reduced_error is None:
         solutions, cheap, seconds = points, 0, trial.seconds(n, points)
     else:
-        solutions, cheap = FULL_SOLUTIONS, points + SURVEY_POINTS * len(map_frequencies(job))
+        driven = sum(port.drive != 0 for port in job.cell.ports)
+        solutions, cheap = FULL_SOLUTIONS, points + SURVEY_POINTS * driven * len(map_frequencies(job))
+        base, writing = base + REDUCED_BYTES, WRITING_SECONDS["reduced"]
         seconds = trial.seconds(n, round(solutions * PROJECTION)) + cheap * POINT_SECONDS[cell_kind(job.cell)]
     return Cost(
         unknowns=n,
@@ -93,9 +110,10 @@ def estimate_cost(job: Job, engine: EngineFactory = DirectEngine) -> Cost:
         seconds=seconds,
         cheap=cheap,
         estimate_seconds=trial.seconds(finer, SAMPLES),
-        memory=trial.memory(n),
-        estimate_memory=trial.memory(finer),
+        memory=base + trial.memory(n),
+        estimate_memory=base + trial.memory(finer),
         trial=trial.unknowns,
+        writing_seconds=writing,
     )
 
 

@@ -1,10 +1,14 @@
 """Expected cost: growth laws and the choice of the cell that is timed."""
 
 import dataclasses
+import time
 
 import numpy as np
 import pytest
 from scanward.cases import cost
+from scanward.cases.library import find_case
+from scanward.cases.read import read_case
+from scanward.cases.run import run_case
 from scanward.geometry.stack import Layer, Stack
 from synthetic import sheet_job
 
@@ -54,6 +58,40 @@ def test_a_reduced_run_counts_full_solutions_and_cheap_points():
     assert found.solutions == cost.FULL_SOLUTIONS and direct.cheap == 0
     assert found.cheap == direct.solutions + 3 * cost.SURVEY_POINTS
     assert found.seconds > found.cheap * cost.POINT_SECONDS["upright conductors"]
+    assert found.memory - direct.memory == pytest.approx(cost.REDUCED_BYTES)
+    assert direct.memory > cost.PROGRAM_BYTES and found.writing_seconds > direct.writing_seconds > 0
+
+
+def test_maxima_are_sought_for_every_driven_port():
+    job = dataclasses.replace(sheet_job(ports=3), reduced_error=1e-4)
+    driven = tuple(dataclasses.replace(p, drive=d) for p, d in zip(job.cell.ports, (1, 1j, 0), strict=True))
+    both = dataclasses.replace(job, cell=dataclasses.replace(job.cell, ports=driven))
+
+    class Quick:
+        unknowns, stored_bytes = 40, 1e5
+
+        def __init__(self, *_):
+            pass
+
+        def solve(self, *_):
+            pass
+
+    more = cost.estimate_cost(both, Quick).cheap - cost.estimate_cost(job, Quick).cheap
+    assert more == 3 * cost.SURVEY_POINTS
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("name", ["strip_dipole", "crossed_dipoles_circular", "printed_dipole_blind"])
+def test_expected_cost_is_that_of_the_run(name, tmp_path):
+    """Within the factor of 2 that `check` states; in time of the processor, so that other programs do not count."""
+    job = read_case(find_case(name))
+    found = cost.estimate_cost(job)
+    begun = time.process_time()
+    outcome = run_case(job, tmp_path)
+    spent = time.process_time() - begun
+    assert 0.5 < spent / (found.seconds + found.estimate_seconds + found.writing_seconds) < 2
+    assert outcome.result is not None and outcome.result.certificate is not None
+    assert 0.5 < outcome.result.certificate.full_solutions / found.solutions < 2
 
 
 def test_kinds_of_cells():
