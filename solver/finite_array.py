@@ -31,7 +31,7 @@ Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 Ints = NDArray[np.int64]
 
-DIRECT_LIMIT = 8000  # unknowns up to which the system is factorised (16 bytes times its square)
+DIRECT_LIMIT = 5000  # unknowns up to which the system is factorised (16 bytes times its square)
 ITERATIVE_TOLERANCE = 1e-6
 BATCH = 3000  # directions handled together
 

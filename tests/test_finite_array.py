@@ -6,51 +6,83 @@ import numpy as np
 import pytest
 from array_cells import CELLS, array, model
 from cells import FREQUENCY, K, strip_dipole
-from reference_whole_array import WholeArray
+from reference_finite import WholeArrayReference
+from reference_finite_layered import printed_array, surface_wave_power
 from scanward.geometry.errors import InputError
-from scanward.solver.array_basis import build_array_model, probe_change
+from scanward.solver.array_basis import basis_error, build_array_model, probe_change
 from scanward.solver.array_sites import rectangle
 from scanward.solver.finite_array import FiniteArray
+from scanward.solver.greedy import build_reduced
 from scanward.solver.lag_coupling import lag_couplings
+from scanward.solver.reduced import ReducedModel
 from scanward.solver.result import ScanPoints
 from scanward.solver.sweep import CellSolver
 
 L_SHAPE = np.array([[0, 0], [1, 0], [2, 0], [0, 1], [0, 3]])  # a corner, and an element on its own
 
 
+def compare(whole: WholeArrayReference, name: str, sites, terminations=None) -> None:
+    """S, embedded patterns with their phases, radiated and absorbed power of one array."""
+    one = array(name, sites, terminations)
+    assert np.abs(one.scattering() - whole.scattering).max() < 2e-5
+    theta, phi = (g.ravel() for g in np.meshgrid(np.radians([0.0, 25.0, 50.0, 80.0]), np.radians([10.0, 100.0, 230.0])))
+    patterns, true = one.embedded_patterns(ScanPoints.from_angles(theta, phi)), whole.embedded_patterns(theta, phi)
+    largest = np.abs(true).max()  # 2e-4 of it is 0.05 dB at -30 dB
+    assert np.abs(1j * patterns - true).max() < 2e-4 * largest  # the product leaves j out (`waves`)
+    excitation = one.scan_excitation(0.3, 0.2)
+    budget = one.power_budget(excitation)
+    assert sum(budget.radiated) == pytest.approx(whole.radiated_power(excitation), abs=1e-4)
+    absorbed = budget.conductors + budget.loads + budget.terminations
+    assert absorbed == pytest.approx(whole.absorbed_power(excitation), abs=1e-4)
+
+
+@pytest.mark.parametrize(
+    ("name", "sites", "terminations"),
+    [
+        ("strip", rectangle(1, 1), None),
+        ("strip", rectangle(2, 3), {0: "open", 2: "matched", 3: "short", 4: 20 - 30j}),
+        ("triangular", L_SHAPE, None),
+        ("free space", L_SHAPE, None),
+        ("lossy", L_SHAPE, {1: "matched"}),
+        ("loaded pair", rectangle(1, 3), {0: "open", (2, 1): 15.0}),
+        ("patch", rectangle(1, 2), None),
+    ],
+)
+def test_small_arrays_are_those_of_brute_force(name, sites, terminations):
+    """SECOND METHOD: one matrix of the whole array without lattice; wanted 1e-4 for the basis."""
+    compare(WholeArrayReference(CELLS[name](), sites, FREQUENCY, terminations), name, sites, terminations)
+
+
 @pytest.mark.parametrize(
     ("name", "sites"),
-    [("strip", rectangle(2, 3)), ("triangular", L_SHAPE), ("free space", L_SHAPE), ("patch", rectangle(1, 2)),
-     ("strip", rectangle(1, 1))],
-)  # fmt: skip
-def test_scattering_is_that_of_brute_force(name, sites):
-    """SECOND METHOD: one matrix of the whole array without lattice; wanted 1e-4 for the basis."""
-    whole = WholeArray(CELLS[name](), sites, K)
-    assert np.abs(array(name, sites).scattering() - whole.scattering).max() < 2e-5
+    [
+        ("slab", rectangle(1, 2)),
+        *(pytest.param(n, rectangle(3, 3), marks=pytest.mark.slow) for n in ("slab", "lossy slab")),
+    ],
+)
+def test_small_layered_arrays_are_those_of_brute_force(name, sites):
+    """SECOND METHOD: space-domain kernels by Sommerfeld integrals, surface waves by their own residues."""
+    whole = printed_array(CELLS[name](), sites, FREQUENCY)
+    compare(whole, name, sites)
+    if name == "slab":
+        one = array(name, sites)
+        excitation = one.scan_excitation(0.3, 0.2)
+        bound = surface_wave_power(whole, excitation)
+        assert bound > 0.01 and one.power_budget(excitation).surface_waves == pytest.approx(bound, abs=1e-5)
 
 
 @pytest.mark.slow
 @pytest.mark.parametrize("name", ["strip", "patch"])
 def test_five_by_five_is_brute_force(name):
     """SECOND METHOD."""
-    whole = WholeArray(CELLS[name](), rectangle(5, 5), K)
-    assert np.abs(array(name, rectangle(5, 5)).scattering() - whole.scattering).max() < 2e-5
+    compare(WholeArrayReference(CELLS[name](), rectangle(5, 5), FREQUENCY), name, rectangle(5, 5))
 
 
-@pytest.mark.parametrize(
-    ("name", "sites"), [("strip", rectangle(2, 2)), ("free space", L_SHAPE), ("patch", rectangle(1, 2))]
-)
-def test_embedded_patterns_are_those_of_brute_force(name, sites):
-    """SECOND METHOD: 0.05 dB wherever the gain exceeds -30 dB of the largest, phases too."""
-    whole = WholeArray(CELLS[name](), sites, K)
-    theta, phi = (g.ravel() for g in np.meshgrid(np.radians([0.0, 25.0, 50.0, 75.0]), np.radians([10.0, 100.0, 230.0])))
-    directions = ScanPoints.from_angles(theta, phi)
-    found, true = array(name, sites).embedded_patterns(directions), whole.gain_amplitudes(theta, phi)
-    assert np.abs(found - true).max() < 2e-4 * np.abs(true).max()
-    if not whole.cell.ground:
-        below = array(name, sites).embedded_patterns(directions, side=-1)
-        true = whole.gain_amplitudes(np.pi - theta, phi)
-        np.testing.assert_allclose(np.abs(below), np.abs(true), atol=2e-4 * np.abs(true).max())
+def test_lower_half_space_of_an_array_without_ground():
+    """SECOND METHOD: theta is measured from -z there."""
+    whole, theta, phi = WholeArrayReference(CELLS["free space"](), L_SHAPE, FREQUENCY), np.array([0.6]), np.array([0.8])
+    below = array("free space", L_SHAPE).embedded_patterns(ScanPoints.from_angles(theta, phi), side=-1)
+    np.testing.assert_allclose(np.abs(below), np.abs(whole.embedded_patterns(np.pi - theta, phi)), atol=1e-4)
 
 
 @pytest.mark.parametrize("name", ["strip", "free space", "lossy", "loaded pair", "patch", "slab", "no ground"])
@@ -165,9 +197,20 @@ def test_basis_of_a_band():
     cell = strip_dipole(size=0.08)
     banded, certificate = build_array_model(CellSolver(cell, band[1]), band, error=1e-3)
     assert certificate.reached
-    whole = WholeArray(cell, L_SHAPE, 0.937 * K)
+    whole = WholeArrayReference(cell, L_SHAPE, 0.937 * FREQUENCY)
     found = FiniteArray(banded, 0.937 * FREQUENCY, L_SHAPE).scattering()
     assert np.abs(found - whole.scattering).max() < 1e-3
+
+
+def test_reduced_models_of_visible_space_and_stored_ones_serve_too():
+    """SECOND METHOD: brute force with the basis of a scan map; the change by its newest snapshots bounds the error."""
+    cell = CELLS["strip"]()
+    visible, _ = build_reduced(CellSolver(cell, FREQUENCY), (FREQUENCY, FREQUENCY), error=1e-3)
+    read = ReducedModel.from_arrays(cell, visible.arrays())
+    error = np.abs(
+        FiniteArray(read, FREQUENCY, L_SHAPE).scattering() - WholeArrayReference(cell, L_SHAPE, FREQUENCY).scattering
+    ).max()
+    assert error < max(1e-6, basis_error(visible, FREQUENCY)) < 1e-3
 
 
 def test_couplings_of_a_site_with_itself_are_the_isolated_element():

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import dataclasses
+
 import numpy as np
 import pytest
 from array_cells import array, model
 from cells import FREQUENCY, K
 from scanward.solver.array_sites import rectangle
 from scanward.solver.infinite_coupling import infinite_couplings
+from scipy.special import erfc
 
 
 def grid(reach: int) -> np.ndarray:
@@ -17,7 +20,11 @@ def grid(reach: int) -> np.ndarray:
 
 @pytest.mark.parametrize(
     ("name", "side", "near"),
-    [("strip", 17, 1.5e-4), ("triangular", 21, 2.5e-4), pytest.param("slab", 25, 2e-3, marks=pytest.mark.slow)],
+    [
+        ("strip", 17, 1.5e-4),
+        pytest.param("triangular", 21, 2.5e-4, marks=pytest.mark.slow),
+        pytest.param("slab", 25, 2e-3, marks=pytest.mark.slow),
+    ],
 )
 def test_centre_column_of_a_large_array(name, side, near):
     """SECOND METHOD: the middle element driven, all others matched; edges are far away (surface waves reach them)."""
@@ -57,7 +64,10 @@ def test_power_and_active_reflection_add_up():
     kt = np.stack(np.meshgrid(step, step), -1).reshape(-1, 2) @ m.cell.lattice.reciprocal
     gamma = m.solve(K, kt).scattering[:, 0, 0]
     assert np.sum(np.abs(found.scattering) ** 2) == pytest.approx(np.mean(np.abs(gamma) ** 2), abs=1e-3)
-    inside = K * np.array([[0.0, 0.0], [0.3, 0.4]])
+    inside = K * np.array([[0.0, 0.0], [0.1, 0.0]])
     true = m.solve(K, inside).scattering
-    assert np.abs(found.active(inside) - true).max() < 3e-3
+    assert np.abs(found.active(inside) - true).max() < 1e-2  # cut off sharply
+    bell = 0.5 * erfc((found.distance - 3.4) / 1.0)
+    tapered = dataclasses.replace(found, scattering=found.scattering * bell[:, None, None])
+    assert np.abs(tapered.active(inside) - true).max() < 5e-4
     assert found.distance.max() == pytest.approx(6 * np.sqrt(2))

@@ -54,7 +54,10 @@ def test_mutual_impedance_of_two_dipoles(height):
     assert np.abs(z - true).max() < 0.003 * 73
 
 
-@pytest.mark.parametrize("name", ["strip", "triangular", "free space", "slab", "lossy slab"])
+@pytest.mark.parametrize(
+    "name",
+    ["strip", "slab", *(pytest.param(n, marks=pytest.mark.slow) for n in ("triangular", "free space", "lossy slab"))],
+)
 def test_lattice_sum_gives_back_the_periodic_operator(name):
     """CLOSED: sum_m g(rho_m) Z_m exp(-j kt . rho_m) with a bell g, flat at 0, is Z about kt wherever that is smooth."""
     cell = CELLS[name]()
