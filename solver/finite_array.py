@@ -33,7 +33,8 @@ Ints = NDArray[np.int64]
 
 DIRECT_LIMIT = 5000  # unknowns up to which the system is factorised (16 bytes times its square)
 ITERATIVE_TOLERANCE = 1e-6
-BATCH = 3000  # directions handled together
+MOST_BYTES = 4e9  # of the couplings between all offsets
+PATTERN_BYTES = 1e8  # of what directions are handled together
 
 
 @dataclass(frozen=True)
@@ -90,12 +91,11 @@ class FiniteArray:
     ----------
     model : ReducedModel from `array_basis.build_array_model`
     frequency : Hz, within the model's band
-    sites : (n_site, 2) integer cells of the case's own lattice, all different; `array_sites.rectangle` lists rows and
-    columns
-    terminations : by index of the site: "matched" (in its reference resistance), "open", "short" or an impedance in
-    ohm,
-        for all ports of elements that are dummies; by (site, port) for single ports. All others are live: driven
-        through, or terminated in, their reference resistance.
+    sites : (n_site, 2) integer cells of the case's own lattice, all different; `array_sites.rectangle` lists rows
+        and columns
+    terminations : what dummy elements end in: by index of the site, for all its ports, or by (site, port):
+        "matched" (in the reference resistance), "open", "short" or an impedance in ohm. All other ports are live:
+        driven through, or terminated in, their reference resistance.
     direct_limit : unknowns (sites times basis size) up to which the system is solved directly
     tolerance : relative residual of the iterative solver beyond that
 
@@ -107,7 +107,8 @@ class FiniteArray:
     Raises
     ------
     InputError
-        For sites twice the same, unknown terminations, no live port, or conductors that touch those of the next cell.
+        For sites twice the same or too far apart, unknown terminations, no live port, or conductors that touch those of
+        the next cell.
     """
 
     def __init__(
@@ -138,6 +139,14 @@ class FiniteArray:
 
     def _lags(self) -> Complexes:
         sides = np.ptp(self.sites, axis=0)
+        size = 16.0 * np.prod(2.0 * sides + 1) * self.model.size**2
+        if size > MOST_BYTES:
+            raise InputError(
+                f"the couplings over {sides[0] + 1} by {sides[1] + 1} cells would take {size / 1e9:.1f} GB.",
+                where="finite array",
+                allowed=f"{MOST_BYTES / 1e9:.0f} GB",
+                hint="Fewer rows and columns, or a basis of fewer currents (`build_array_model` at one frequency).",
+            )
         steps = [np.arange(-side, side + 1) for side in sides]
         offsets = np.stack(np.meshgrid(*steps, indexing="ij"), -1).reshape(-1, 2)
         lags = lag_couplings(self.model, self.frequency, offsets)
@@ -251,8 +260,9 @@ class FiniteArray:
         """(n_direction, m, 2) for coefficients (n_site, r, m)."""
         n, (sites, r, m) = len(directions), coefficients.shape
         result = np.empty((n, m, 2), dtype=complex)
-        for start in range(0, n, BATCH):
-            some = slice(start, start + BATCH)
+        step = int(np.clip(PATTERN_BYTES / (16 * r * m), 1, 3000))
+        for start in range(0, n, step):
+            some = slice(start, start + step)
             part = ScanPoints(directions.u[some], directions.v[some], directions.phi[some])
             factors = element_factors(self.model, self.k, part, side)
             phase = np.exp(1j * self.k * (np.column_stack([part.u, part.v]) @ self.positions.T))

@@ -76,8 +76,16 @@ def lag_couplings(model: ReducedModel, frequency: float, offsets: Ints) -> Compl
     offsets : (n, 2) cells of the source as seen from the observer, in the cell's own lattice; any order, (0, 0) too
 
     Conductor losses and loads are counted at (0, 0). ``Z_-m`` is the transpose of ``Z_m`` to rounding.
+
+    Raises
+    ------
+    ValueError
+        For a frequency outside the model's band.
     """
     k = 2 * np.pi * frequency / SPEED_OF_LIGHT
+    low, high = model.band
+    if not low * (1 - 1e-9) <= k <= high * (1 + 1e-9):
+        raise ValueError(f"k = {k:g} rad/m lies outside the reduced model's band {low:g} to {high:g} rad/m")
     offsets = np.asarray(offsets, dtype=np.int64).reshape(-1, 2)
     unique, sign, place = _half(offsets)
     rho = model.cell.lattice.positions(unique)

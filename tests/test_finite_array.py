@@ -227,6 +227,7 @@ def test_couplings_of_a_site_with_itself_are_the_isolated_element():
     ("sites", "terminations", "words"),
     [
         ([[0, 0], [1, 0], [0, 0]], None, r"site \[0, 0\] is listed twice"),
+        ([[0, 0], [5000, 700]], None, "5001 by 701 cells would take"),
         ([[0.5, 0]], None, "not a list of integer cells"),
         ([[0, 0]], {0: "matched"}, "at least one live port"),
         ([[0, 0]], {1: "open"}, "sites 0 to 0"),
@@ -246,6 +247,11 @@ def test_excitations_that_are_none_are_refused():
     for bad in (np.zeros(2), np.ones(3), [np.nan, 1.0]):
         with pytest.raises(ValueError, match="excitation"):
             one.solve(bad)
+
+
+def test_frequencies_outside_the_band_are_refused():
+    with pytest.raises(ValueError, match="outside the reduced model's band"):
+        FiniteArray(model("strip")[0], 1.01 * FREQUENCY, [[0, 0]])
 
 
 def test_connected_arrays_are_refused():
