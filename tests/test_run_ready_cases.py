@@ -21,6 +21,7 @@ CASES = sorted((Path(__file__).parents[1] / "cases").glob("*.toml"))
 
 
 @pytest.mark.slow
+@pytest.mark.timeout(1800)
 @pytest.mark.parametrize("path", CASES, ids=lambda p: p.stem)
 def test_case_runs_to_its_report_and_expectations(path, tmp_path):
     job = read_case(path)
@@ -38,6 +39,7 @@ def test_case_runs_to_its_report_and_expectations(path, tmp_path):
 
 
 @pytest.mark.slow
+@pytest.mark.timeout(1800)
 @pytest.mark.parametrize("name", ["strip_dipole", "wire_dipole_free_space"])
 def test_stated_error_covers_a_much_finer_mesh(name, tmp_path):
     """Reflection on a mesh three times finer, at broadside and the cone's edge: within the report's estimate."""
@@ -54,6 +56,7 @@ def test_stated_error_covers_a_much_finer_mesh(name, tmp_path):
 
 
 @pytest.mark.slow
+@pytest.mark.timeout(1800)
 @pytest.mark.parametrize("path", CASES, ids=lambda p: p.stem)
 def test_reduced_model_keeps_its_stated_error(path):
     """SECOND METHOD: full solutions at 200 random points of the band and of all visible space."""
