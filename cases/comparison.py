@@ -34,7 +34,7 @@ class Comparison:
     diagnosis : why they differ
     scan, support : active reflection over scan and the tests, with the data as measured
     corrected_scan, corrected_support : with exchanged ports undone and fitted cables taken out; None where none found
-    moved_support : with the model's parameters moved within their tolerances besides; None where none were fitted
+    moved_scan, moved_support : with the model's parameters moved within their tolerances besides; None without any
     fitted : indices of the sensitivities that were fitted
     invented : whether a measured file says that it is invented
     patterns : cuts compared; `loose_cuts` those that found no predicted cut, with the reason
@@ -47,6 +47,7 @@ class Comparison:
     support: Support
     corrected_scan: ScanReflection | None
     corrected_support: Support | None
+    moved_scan: ScanReflection | None
     moved_support: Support | None
     fitted: tuple[int, ...]
     patterns: tuple[CutComparison, ...]
@@ -92,20 +93,20 @@ def compare(
     fitted = _parameters(prediction, fit)
     directions = _directions(prediction) if directions is None else directions
     diagnosis = diagnose(data, prediction, fitted)
-    use, raw, chosen = data.uncertainty, diagnosis.fits.plain, diagnosis.fits.chosen
+    use, raw = data.uncertainty, diagnosis.fits.plain
     scan = synthesise(data.scattering, prediction, use, directions)
     support = judge_support(data.scattering, raw.model, prediction, use, scan, wanted=wanted)
-    corrected_scan = corrected_support = moved_support = None
+    corrected_scan = corrected_support = moved_scan = moved_support = None
+    undone, gain = diagnosis.undone, diagnosis.gain
     if diagnosis.swaps or diagnosis.cabled:
-        corrected_scan = synthesise(diagnosis.corrected, prediction, use, directions, scan.port)
-        bench = diagnosis.fits.cables if diagnosis.cabled else None
-        corrected_support = judge_support(
-            diagnosis.corrected, prediction.scattering, prediction, use, corrected_scan, bench, wanted
-        )
+        bench = diagnosis.fits.cables if diagnosis.cabled else diagnosis.fits.raw
+        corrected_scan = synthesise(diagnosis.corrected, prediction, use, directions, scan.port, gain)
+        corrected_support = judge_support(undone, bench.model, prediction, use, corrected_scan, bench, wanted)
     if fitted:
-        moved = _moved(prediction, fitted, chosen.moves if len(chosen.moves) else diagnosis.fits.both.moves)
-        moved_scan = synthesise(diagnosis.corrected, moved, use, directions, scan.port)
-        moved_support = judge_support(diagnosis.corrected, moved.scattering, moved, use, moved_scan, chosen, wanted)
+        rich = diagnosis.fits.both if diagnosis.cabled else diagnosis.fits.parameters
+        moved = _moved(prediction, fitted, rich.moves)
+        moved_scan = synthesise(diagnosis.corrected, moved, use, directions, scan.port, gain)
+        moved_support = judge_support(undone, rich.model, moved, use, moved_scan, rich, wanted)
     done, loose = _patterns(cuts, prediction, pattern_uncertainty)
     return Comparison(
         prediction,
@@ -115,6 +116,7 @@ def compare(
         support,
         corrected_scan,
         corrected_support,
+        moved_scan,
         moved_support,
         fitted,
         done,

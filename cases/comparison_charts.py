@@ -73,9 +73,8 @@ def coupling_over_distance(comparison: Comparison) -> Drawing:
             label = "bench faults taken out"
             bottom.plot(distance, decibels(mended - predicted), "+", color=CORRECTED, ms=6, label=label)
         spread = decibels(2.45 * np.sqrt((along**2 + across**2) / 2))
-        order = np.argsort(distance)
         label = "95 % by the stated uncertainty"
-        bottom.plot(distance[order], spread[order], "-", color=FAINT, lw=4, zorder=0, label=label)
+        bottom.plot(distance, spread, "_", color=MUTED, ms=13, mew=1.6, zorder=1, label=label)
         bottom.set_ylabel("|measured − predicted| (dB)")
         bottom.set_xlabel("distance between the elements (wavelengths)")
         bottom.legend(frameon=False, fontsize=7.5, loc="upper right")
@@ -112,14 +111,17 @@ def level_over_frequency(comparison: Comparison) -> Drawing:
         axes.plot(frequency, limit, color=ALARM, lw=1, ls=(0, (5, 2)))
         axes.set_yscale("log")
         axes.set_ylim(0.5, top * 1.5)
+        ticks = np.array([0.5, 1, 2, 5, 10, 20, 50, 100, 200, 500, 1000, 2000, 5000])
+        axes.set_yticks(ticks[ticks < top * 1.5], [f"{x:g}" for x in ticks[ticks < top * 1.5]])
+        axes.set_yticks([], minor=True)
         seen = limit[np.isfinite(limit)]
-        entries.append((float(seen[-1]), "may be", ALARM))
+        entries.append((float(seen[-1]), "threshold", ALARM))
         axes.set_xlabel("frequency (GHz)")
         axes.set_ylabel("r.m.s. residual / uncertainty")
         axes.set_title("Does the stated uncertainty explain the residuals?")
         low, high = axes.get_ylim()
         scaled = [(low + (high - low) * np.log(y / low) / np.log(high / low), t, c) for y, t, c in entries]
-        _label_log(axes, scaled)
+        label_ends(axes, scaled)
         data = render(figure)
     return Drawing(
         "comparison-levels", data, "image/svg+xml",
@@ -129,17 +131,14 @@ def level_over_frequency(comparison: Comparison) -> Drawing:
     )  # fmt: skip
 
 
-def _label_log(axes: Any, entries: list[tuple[float, str, Any]]) -> None:
-    """Labels right of logarithmic axes: `label_ends` counts heights linearly between the limits."""
-    label_ends(axes, entries)
-
-
 def cut_groups(directions: Floats) -> list[tuple[float, NDArray[np.int64], Floats]]:
     """Directions (n, 2) sorted into cuts of common azimuth: (phi in [0, pi), indices, signed theta), from 3 on."""
     s = np.linalg.norm(directions, axis=1)
     centre = np.flatnonzero(s < 1e-9)
     away = np.flatnonzero((s >= 1e-9) & (s <= 1))
-    phi = np.mod(np.round(np.arctan2(directions[away, 1], directions[away, 0]), 6), round(np.pi, 6))
+    turn = np.round(np.arctan2(directions[away, 1], directions[away, 0]) * 1e4)
+    phi = np.mod(turn, np.round(np.pi * 1e4)) / 1e4
+    phi[np.abs(phi - np.pi) < 2e-4] = 0.0
     groups = []
     for one in np.unique(phi):
         index = np.concatenate([centre[:1], away[phi == one]])
@@ -161,7 +160,7 @@ def reflection_over_scan(comparison: Comparison) -> Drawing | None:
     rows = np.unique(seen[np.round(np.linspace(0, len(seen) - 1, min(3, len(seen)))).astype(int)])
     with style():
         figure = canvas(WIDTH, 2.4 * len(rows) + 0.3)
-        axes = figure.subplots(len(rows), len(groups), squeeze=False, sharex="col", sharey=True)
+        axes = figure.subplots(len(rows), len(groups), squeeze=False, sharex="col", sharey="row")
         for r, f in enumerate(rows):
             for c, (phi, index, theta) in enumerate(groups):
                 last = r == len(rows) - 1
@@ -171,7 +170,8 @@ def reflection_over_scan(comparison: Comparison) -> Drawing | None:
                 if last:
                     axes[r, c].set_xlabel("scan angle θ (deg)")
             axes[r, 0].set_ylabel(f"active reflection (dB)\n{gigahertz(float(comparison.prediction.frequency[f]))}")
-        axes[0, 0].set_ylim(max(-45.0, axes[0, 0].get_ylim()[0]), min(2.0, axes[0, 0].get_ylim()[1] + 4))
+            low, high = axes[r, 0].get_ylim()
+            axes[r, 0].set_ylim(max(-45.0, min(low, high - 10)), min(3.0, high + 1))
         handles, labels = axes[0, 0].get_legend_handles_labels()
         figure.legend(handles, labels, loc="outside lower center", ncols=4, frameon=False, fontsize=7.5)
         data = render(figure)

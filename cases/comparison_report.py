@@ -28,6 +28,7 @@ from .comparison_words import (
 from .plot import Drawing
 
 FOLDER = Path(__file__).parent
+CABLES_SHOWN = 30
 
 
 def comparison_section(comparison: Comparison, figures: Sequence[Drawing] | None = None) -> Markup:
@@ -58,7 +59,8 @@ def comparison_section(comparison: Comparison, figures: Sequence[Drawing] | None
         "checks": check_rows(comparison),
         "doubts": comparison.diagnosis.notes,
         "parameters": parameter_rows(comparison),
-        "cables": cable_rows(comparison),
+        "cables": cable_rows(comparison, CABLES_SHOWN),
+        "more_cables": max(len(cable_rows(comparison)) - CABLES_SHOWN, 0),
         "patterns": pattern_rows(comparison),
     }
     return Markup(environment.get_template("comparison.html").render(values))
@@ -106,6 +108,10 @@ def write_comparison(folder: Path, comparison: Comparison) -> tuple[Path, ...]:
         files.append(path)
     files.append(_write(folder / "comparison-residuals.csv", comparison.invented, _residual_rows(comparison)))
     files.append(_write(folder / "comparison-scan.csv", comparison.invented, _scan_rows(comparison)))
+    cables = cable_rows(comparison)
+    if cables:
+        rows: list[tuple] = [("port", "delay", "loss at the middle of the band"), *cables]
+        files.append(_write(folder / "comparison-cables.csv", comparison.invented, rows))
     return tuple(files)
 
 

@@ -44,9 +44,8 @@ def support_rows(comparison: Comparison) -> list[Row]:
         rows.append(
             _support_row("bench faults taken out", comparison.corrected_support, comparison.corrected_scan, comparison)
         )
-    if comparison.moved_support is not None:
-        scan = comparison.corrected_scan or comparison.scan
-        rows.append(_support_row("and parameters moved", comparison.moved_support, scan, comparison))
+    if comparison.moved_support is not None and comparison.moved_scan is not None:
+        rows.append(_support_row("and parameters moved", comparison.moved_support, comparison.moved_scan, comparison))
     return rows
 
 
@@ -142,7 +141,7 @@ def moved_fit(comparison: Comparison) -> Fit:
     return comparison.diagnosis.fits.both if comparison.diagnosis.cabled else comparison.diagnosis.fits.parameters
 
 
-def cable_rows(comparison: Comparison, most: int = 400) -> list[Row]:
+def cable_rows(comparison: Comparison, most: int = 10_000) -> list[Row]:
     """Fitted cables: (port, delay in ps, loss in dB); none where the data do not ask for any."""
     if not comparison.diagnosis.cabled:
         return []

@@ -31,9 +31,11 @@ class Diagnosis:
     checks : of the measurement against itself
     swaps : exchanged ports found, reported and never applied to what is shown as measured
     fits : of the explanations
-    corrected : (n_freq, n, n) measured coefficients with swaps undone and fitted cables taken out
+    undone : (n_freq, n, n) measured coefficients with swaps undone
+    corrected : (n_freq, n, n) and fitted cables taken out
+    gain : (n_freq, n) of the fitted cables, 1 without any
     edge_ratio : mean squared residual where an edge element takes part over that between inner ones, best fit
-    infinite_level, finite_level : r.m.s. whitened residual of `corrected` against the infinite and the finite array
+    infinite_level, finite_level : r.m.s. whitened residual of the same against the infinite and the finite array
         over the same coefficients; nan when the infinite coupling is not given
     notes : what the data cannot show
     """
@@ -44,7 +46,9 @@ class Diagnosis:
     checks: SelfChecks
     swaps: tuple[Swap, ...]
     fits: Fits
+    undone: Complexes
     corrected: Complexes
+    gain: Complexes
     edge_ratio: float
     infinite_level: float
     finite_level: float
@@ -71,17 +75,17 @@ def diagnose(data: MeasuredScattering, prediction: Prediction, parameters: tuple
     undone = exchanged(measured, swaps)
     fits = Fits(plain, *_four(undone, data, prediction, parameters, swaps))
     chosen = fits.chosen
-    corrected = undone
-    if chosen.cables:
-        g = chosen.gain(prediction)
-        corrected = undone / (g[:, :, None] * g[:, None, :])
+    gain = chosen.gain(prediction)
+    both_ways = gain[:, :, None] * gain[:, None, :]
     shares = weigh(fits, undone, data, prediction, parameters, checks, swaps)
     best, sentence = answer(fits, shares, checks)
     out, n_out, inside, n_in = split_by_edge(undone, chosen, prediction, data)
     ratio = (out / n_out) / max(inside / n_in, 1e-12) if min(n_out, n_in) >= 10 else float("nan")
-    levels = _levels(corrected, prediction, data)
+    levels = _levels(undone, both_ways, prediction, data)
     all_notes = (*notes, *_cable_notes(chosen, prediction, measured))
-    return Diagnosis(best, sentence, shares, checks, swaps, fits, corrected, ratio, *levels, all_notes)
+    return Diagnosis(
+        best, sentence, shares, checks, swaps, fits, undone, undone / both_ways, gain, ratio, *levels, all_notes
+    )
 
 
 def _four(
@@ -109,15 +113,17 @@ def _predicted_delay(prediction: Prediction) -> Floats:
     return mean_delay(prediction.frequency, prediction.scattering.reshape(-1, n * n)).reshape(n, n)
 
 
-def _levels(corrected: Complexes, prediction: Prediction, data: MeasuredScattering) -> tuple[float, float]:
+def _levels(
+    undone: Complexes, both_ways: Complexes, prediction: Prediction, data: MeasuredScattering
+) -> tuple[float, float]:
     infinite = prediction.infinite_coupling()
     if infinite is None:
         return float("nan"), float("nan")
-    values = np.where(np.isfinite(infinite), corrected, np.nan)
+    values = np.where(np.isfinite(infinite), undone, np.nan)
     count = 2 * max(np.count_nonzero(np.isfinite(values)), 1)
     levels = []
     for model in (np.where(np.isfinite(infinite), infinite, 0), prediction.scattering):
-        z = residuals(values, model, data.uncertainty, prediction.error)
+        z = residuals(values, model * both_ways, data.uncertainty, prediction.error)
         levels.append(float(np.sqrt(np.sum(z**2) / count)))
     return levels[0], levels[1]
 

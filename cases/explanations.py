@@ -23,7 +23,7 @@ from .swaps import Swap
 
 Complexes = NDArray[np.complex128]
 MEASUREMENT, SIZE, MODEL = "the measurement", "the finite size", "the model"
-FALSE_ALARM = 0.01
+FALSE_ALARM, BY_CHANCE = 0.01, 1e-3
 LEAD = 0.5
 """An explanation is named when it removes at least this share of the excess alone, and no other can do the same."""
 ALLOWANCE = 1.21
@@ -76,13 +76,17 @@ class Fits:
 
 
 def better(poor: Fit, rich: Fit) -> bool:
-    """Whether the richer fit is better than chance, by the likelihood ratio scaled to the misfit that remains."""
+    """Whether the richer fit is better than chance, by the likelihood ratio scaled to the misfit that remains.
+
+    Chance has `BY_CHANCE` here, far below `FALSE_ALARM`, since several explanations are tried on the same data.
+    """
     from scipy.stats import chi2
 
     extra = rich.freedom - poor.freedom
     if extra <= 0:
         return False
-    return bool((poor.chi_squared - rich.chi_squared) / max(1.0, rich.reduced) > chi2.isf(FALSE_ALARM, extra))
+    gained = (poor.chi_squared - rich.chi_squared) / max(ALLOWANCE, rich.reduced)
+    return bool(gained > chi2.isf(BY_CHANCE, extra))
 
 
 def accepted(fit: Fit) -> bool:

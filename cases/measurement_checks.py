@@ -13,6 +13,8 @@ Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
 FALSE_ALARM = 1e-3
 """Chance that sound data fail one of these checks."""
+ALLOWANCE = 1.21
+"""Squares may be larger by this, since a stated uncertainty is itself known to some ten per cent."""
 ABOVE_NOISE = 3.0
 """A coefficient below this many times the noise floor tells nothing but an upper bound."""
 
@@ -81,7 +83,7 @@ def _reciprocity(
     mean = np.where(both, one + two, 1)
     turned = np.where(both, one - two, 0) * np.conj(mean) / np.maximum(np.abs(mean), 1e-300)
     each = (turned.real / along) ** 2 / 2 + (turned.imag / across) ** 2 / 2
-    total, limit = float(each.sum()), float(chi2.isf(FALSE_ALARM, 2 * pairs))
+    total, limit = float(each.sum()), ALLOWANCE * float(chi2.isf(FALSE_ALARM, 2 * pairs))
     k = int(np.argmax(each.sum(axis=0)))
     worst = (int(upper[0][k]), int(upper[1][k]))
     level = np.sqrt(total / (2 * pairs))

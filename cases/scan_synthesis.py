@@ -52,18 +52,27 @@ class ScanReflection:
 
 
 def pick_port(measured: Complexes, prediction: Prediction) -> int:
-    """The driven port nearest to the middle whose coefficients to others were measured best."""
+    """The driven port nearest to the middle for which nearly as many coefficients were measured as for any."""
     known = np.isfinite(measured)
     count = np.maximum(known.sum(axis=(0, 2)), known.sum(axis=(0, 1))).astype(float)
     count[prediction.excitation == 0] = -1
     away = np.linalg.norm(prediction.positions - prediction.positions[prediction.centre], axis=1)
-    return int(np.lexsort((away, -count))[0])
+    return int(np.argmin(np.where(count >= 0.8 * count.max(), np.round(away, 9), np.inf)))
 
 
 def synthesise(
-    measured: Complexes, prediction: Prediction, uncertainty: Uncertainty, directions: Floats, port: int | None = None
+    measured: Complexes,
+    prediction: Prediction,
+    uncertainty: Uncertainty,
+    directions: Floats,
+    port: int | None = None,
+    gain: Complexes | None = None,
 ) -> ScanReflection:
-    """Active reflection of `port` (default: `pick_port`) at directions (n_dir, 2) u, v, measured beside predicted."""
+    """Active reflection of `port` (default: `pick_port`) at directions (n_dir, 2) u, v, measured beside predicted.
+
+    `gain` (n_freq, n): what cables did to a wave at each port before they were taken out of `measured`; noise and
+    uncertainty then belong to the weaker, original values.
+    """
     m = pick_port(measured, prediction) if port is None else port
     row, column = measured[:, m, :], measured[:, :, m]
     turned = bool(np.isfinite(column).sum() > np.isfinite(row).sum())
@@ -76,6 +85,7 @@ def synthesise(
     known = np.isfinite(line)
     missing = ~known & (drive != 0)
     covered = np.any(known, axis=1)
+    faded = np.ones(line.shape) if gain is None else np.abs(gain[:, m : m + 1] * gain)
     total = np.einsum("fn,fnd->fd", np.where(known, line, 0), phase)
     return ScanReflection(
         m,
@@ -84,18 +94,19 @@ def synthesise(
         np.einsum("fn,fnd->fd", np.where(known, predicted, 0), phase),
         np.einsum("fn,fnd->fd", predicted, phase),
         _infinite(prediction, np.asarray(directions), m),
-        _covariance(np.where(known, predicted, np.nan), phase, uncertainty, prediction.error),
+        _covariance(np.where(known, predicted, np.nan), phase, uncertainty, prediction.error, faded),
         np.sum(np.where(missing, np.abs(predicted * drive), 0), axis=1),
         missing,
         turned,
     )
 
 
-def _covariance(line: Complexes, phase: Complexes, uncertainty: Uncertainty, error: float) -> Floats:
-    """Covariance of the sum of (n_freq, n) phasors with independent errors along and across each, turned by `phase`."""
+def _covariance(line: Complexes, phase: Complexes, uncertainty: Uncertainty, error: float, faded: Floats) -> Floats:
+    """Covariance of the sum of (n_freq, n) phasors with independent errors along and across each, turned by `phase`;
+    `faded` (n_freq, n): magnitude the measurement saw over that of `line`."""
     known = np.isfinite(line)
     size = np.abs(np.where(known, line, 0))
-    along, across = uncertainty.deviations(size, error)
+    along, across = (sigma / faded for sigma in uncertainty.deviations(size * faded, error))
     unit = np.where(size > 0, np.where(known, line, 0) / np.where(size > 0, size, 1), 1)
     power = np.abs(phase) ** 2
     circular = np.einsum("fn,fnd->fd", np.where(known, along**2 + across**2, 0), power)
