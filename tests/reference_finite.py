@@ -276,17 +276,16 @@ def element_blocks(
     k = around.k
     blocks = {}
     for lag in lags:
-        shift = np.append(lattice.positions(np.array([lag]))[0], 0.0)
-        current, charge = _point_sums(cloud, shift, around)
+        block = distant_block(cloud, np.append(lattice.positions(np.array([lag]))[0], 0.0), around)
         for p, (more_current, more_charge) in enumerate(zip(*missed.get(lag, ([], [])), strict=True)):
-            current += k ** (2 * p) * more_current.toarray()
-            charge += k ** (2 * p) * more_charge.toarray()
-        blocks[lag] = 1j * k * ETA * current + ETA / (1j * k) * charge
+            block += 1j * k * ETA * k ** (2 * p) * more_current.toarray()
+            block += ETA / (1j * k) * k ** (2 * p) * more_charge.toarray()
+        blocks[lag] = block
     return blocks
 
 
-def _point_sums(cloud: Cloud, shift: Floats, around: Surroundings) -> tuple[Complexes, Complexes]:
-    """Current and charge products by the cloud's points, sources displaced by `shift`, (n, n) each."""
+def distant_block(cloud: Cloud, shift: Floats, around: Surroundings) -> Complexes:
+    """Z (n, n), ohm, by the cloud's points alone, sources displaced by `shift` (3,): exact enough far apart."""
     current, charge = (np.zeros((cloud.n, cloud.n), dtype=complex) for _ in range(2))
     for start in range(0, len(cloud.points), STEP):
         part = slice(start, start + STEP)
@@ -295,7 +294,7 @@ def _point_sums(cloud: Cloud, shift: Floats, around: Surroundings) -> tuple[Comp
         for target, weight, kernel in (*weights, (charge, cloud.charge, kernels[2])):
             if weight.nnz:
                 target += weight[part].T @ (weight.T @ kernel.T).T
-    return current, charge
+    return 1j * around.k * ETA * current + ETA / (1j * around.k) * charge
 
 
 def _functionals(gaps, basis: Basis) -> Floats:
