@@ -153,8 +153,8 @@ def zone_mean(operator: PeriodicOperator, k: float, count: int, lag) -> np.ndarr
 def test_brillouin_zone_mean_of_the_periodic_operator():
     """SECOND METHOD: half a step off the centre, the mean over n x n points of the zone is Z summed over every n-th lag
     with alternating signs (Munk and Burrell, IEEE TAP 27, 331, 1979, MEMORY). n = 8, the copies from the blocks
-    themselves, tapered off: 0.1 % of the largest entry of Z_m in E, measured 4e-4; 1 % two sites away in H, measured 6e-3;
-    falling as the square of the rings taken."""
+    themselves, tapered off: 0.1 % of Z_m's largest entry, measured 4e-4; 1 % two sites away in the H plane,
+    measured 6e-3; falling as the square of the rings taken."""
     cell, count, rings = strip_dipole(size=0.1), 8, 8
     operator = PeriodicOperator(cell, K, 1e-8)
     basis = build_basis(cell.mesh, NOWHERE, ground=True)
