@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,6 +20,7 @@ from ..solver.sweep import CellSolver
 from .guide_plan import GuideRow, guide_plan
 from .job import Breadboard, Job
 from .progress import Progress
+from .quantity import UNITS
 
 Floats = NDArray[np.float64]
 Complexes = NDArray[np.complex128]
@@ -41,6 +42,20 @@ class SizeRow:
     side: int
     reflection: float
     pattern: float
+
+
+@dataclass(frozen=True)
+class Slope:
+    """Difference quotient of the scattering matrix between both ends of a parameter's tolerance.
+
+    `unit`: the one shown, in which `nominal`, `tolerance` and `derivative` (n_freq, n_live, n_live) are
+    """
+
+    name: str
+    unit: str
+    nominal: float
+    tolerance: float
+    derivative: Complexes
 
 
 @dataclass(frozen=True)
@@ -67,6 +82,7 @@ class Bench:
     sizes : growing square arrays; `enough` : side from which on the centre stays alike, None where not reached
     guides : plan of waveguide simulators; `guide_note` : why there is none, or what holds for all
     certificate : of the basis
+    slopes : how the scattering matrix moves with the case's toleranced parameters
     """
 
     frequency: Floats
@@ -93,6 +109,7 @@ class Bench:
     guides: tuple[GuideRow, ...]
     guide_note: str
     certificate: ArrayCertificate
+    slopes: tuple[Slope, ...] = ()
 
 
 def check_bench(job: Job) -> None:
@@ -116,7 +133,37 @@ def predict_bench(job: Job, solver: CellSolver, told: Progress) -> Bench:
     model, certificate = build_array_model(
         solver, band, error=board.error, progress=lambda so_far: told.say(f"breadboard: {so_far}")
     )
-    return _Prediction(job, board, model, told).bench(certificate)
+    bench = _Prediction(job, board, model, told).bench(certificate)
+    return replace(bench, slopes=_slopes(job, board, told))
+
+
+SHOWN = {"length": ("mm", 1e3), "angle": ("deg", 180 / np.pi), "frequency": ("GHz", 1e-9)}
+"""Unit and factor from SI of the kinds of quantities that are not shown in SI."""
+
+
+def _slopes(job: Job, board: Breadboard, told: Progress) -> tuple[Slope, ...]:
+    """By solving the cell again at both ends of every tolerance, on meshes of their own."""
+    found = []
+    for one in job.tolerances:
+        told.say(f"breadboard: both ends of the tolerance of {one.name}")
+        ends = []
+        for sign in (1, -1):
+            text = f"{one.nominal + sign * one.value!r} {UNITS[one.kind]}".strip()
+            varied: Job = job.vary({one.name: text})  # type: ignore[operator]
+            ends.append(_scattering(varied, board))
+        unit, factor = SHOWN.get(one.kind, (UNITS[one.kind], 1.0))
+        tolerance = one.value * factor
+        found.append(Slope(one.name, unit, one.nominal * factor, tolerance, (ends[0] - ends[1]) / (2 * tolerance)))
+    return tuple(found)
+
+
+def _scattering(job: Job, board: Breadboard) -> Complexes:
+    """Scattering matrices (n_freq, n_live, n_live) of the array of another cell."""
+    frequency = board.frequency
+    solver = CellSolver(job.cell, float(frequency[-1]), job.tolerance)
+    model, _ = build_array_model(solver, (float(frequency[0]), float(frequency[-1])), error=board.error)
+    ends: dict[int | tuple[int, int], Termination] = {int(s): board.termination for s in np.flatnonzero(board.dummy)}
+    return np.array([FiniteArray(model, float(hertz), board.cells, ends).scattering() for hertz in frequency])
 
 
 class _Prediction:

@@ -8,8 +8,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from ..geometry.errors import InputError
-from .job import Breadboard
+from ..geometry.errors import InputError, nearest
+from .job import Breadboard, Tolerance
+from .quantity import UNITS, Quantities
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -45,6 +46,39 @@ def build_breadboard(values: Mapping[str, Any], band: Floats) -> Breadboard:
         cells, dummy, values["termination"], frequency, _taper(cells, pedestal), values["alike"], values["largest"],
         values["error"],
     )  # fmt: skip
+
+
+def build_tolerance(
+    values: dict[str, Any], where: str, parameters: Mapping[str, object], quantities: Quantities
+) -> Tolerance:
+    """One entry of `[[tolerance]]`.
+
+    Raises
+    ------
+    InputError
+        For a parameter that does not exist, or a value of another kind or not above zero.
+    """
+    name = values["parameter"]
+    if name not in parameters:
+        raise InputError(
+            f"there is no parameter '{name}'.", where=f"{where}, key 'parameter'",
+            allowed=", ".join(parameters) or "names of [parameters], which is missing", hint=nearest(name, parameters),
+        )  # fmt: skip
+    kind, nominal = _kind_of(name, quantities, where)
+    value = quantities.value(values["value"], kind, f"{where}, key 'value'")
+    if not value > 0:
+        raise InputError(f"{values['value']} is not above zero.", where=f"{where}, key 'value'", allowed="above zero")
+    return Tolerance(name, kind, nominal, float(value))
+
+
+def _kind_of(name: str, quantities: Quantities, where: str) -> tuple[str, float]:
+    """Kind of quantity a parameter is, and its value in SI."""
+    for kind in UNITS:
+        try:
+            return kind, float(quantities.value(name, kind, where))
+        except InputError:
+            continue
+    raise InputError(f"'{name}' is no kind of quantity known here.", where=where, allowed=", ".join(UNITS))
 
 
 def _cells(values: Mapping[str, Any]) -> Ints:

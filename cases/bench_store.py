@@ -11,10 +11,11 @@ import numpy as np
 from ..geometry.errors import InputError
 from ..solver.array_basis import ArrayCertificate
 from ..solver.result import ScanPoints
-from .bench import BUDGET, Bench, GuideRow, SizeRow
+from .bench import BUDGET, Bench, SizeRow, Slope
 from .export import write_csv
+from .guide_plan import GuideRow
 from .layout import join, split
-from .prediction import CutPattern, InfinitePrediction, Prediction
+from .prediction import CutPattern, InfinitePrediction, Prediction, Sensitivity
 from .result import Result
 from .touchstone import write_network
 
@@ -55,6 +56,13 @@ def bench_dataset(bench: Bench) -> xarray.Dataset:
         "size_pattern": ("size", np.array([row.pattern for row in bench.sizes], dtype=float), {"units": "dB"}),
         "guides": (("guide", "number"), guides.reshape(-1, len(GUIDE_NUMBERS))),
     }
+    if bench.slopes:
+        slopes = np.stack([split(one.derivative) for one in bench.slopes])
+        variables["slope"] = (("parameter", "frequency", "port", "port_in", "part"), slopes)
+        for name in ("name", "unit"):
+            variables[f"slope_{name}"] = ("parameter", np.array([getattr(s, name) for s in bench.slopes], dtype=object))
+        for name in ("nominal", "tolerance"):
+            variables[f"slope_{name}"] = ("parameter", np.array([getattr(s, name) for s in bench.slopes]))
     attributes = {
         "centre": bench.centre,
         "enough": bench.enough or 0,
@@ -100,6 +108,17 @@ def read_bench(data: xarray.Dataset) -> Bench:
         guides=tuple(_guide(row) for row in value["guides"]),
         guide_note=str(a["guide_note"]),
         certificate=certificate,
+        slopes=_read_slopes(value),
+    )
+
+
+def _read_slopes(value: dict[str, np.ndarray]) -> tuple[Slope, ...]:
+    if "slope" not in value:
+        return ()
+    rows = zip(value["slope_name"], value["slope_unit"], value["slope_nominal"], value["slope_tolerance"], strict=True)
+    return tuple(
+        Slope(str(name), str(unit), float(nominal), float(tolerance), join(value["slope"][n]))
+        for n, (name, unit, nominal, tolerance) in enumerate(rows)
     )
 
 
@@ -178,6 +197,9 @@ def to_prediction(result: Result) -> Prediction:
         error=bench.certificate.estimated,
         drive=drive[ports[:, 1]].astype(complex),
         infinite=infinite,
+        sensitivities=tuple(
+            Sensitivity(one.name, one.unit, one.nominal, one.tolerance, one.derivative) for one in bench.slopes
+        ),
         patterns=patterns,
         title=job.title,
     )

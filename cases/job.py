@@ -96,6 +96,17 @@ class Breadboard:
 
 
 @dataclass(frozen=True)
+class Tolerance:
+    """A parameter of the case and how far it may be off: `kind` is one of `quantity.UNITS`, both numbers in its SI
+    unit."""
+
+    name: str
+    kind: str
+    nominal: float
+    value: float
+
+
+@dataclass(frozen=True)
 class Job:
     """One case, resolved.
 
@@ -115,6 +126,8 @@ class Job:
     reduced_error : wanted error of a reduced model's active reflection; None: direct solution of every point
     expected_to_fail : whether the case is a ready-made one that shows a failure
     breadboard : the finite array to predict; None for none
+    tolerances : of named parameters
+    vary : callable(overrides) -> Job, the case with parameters replaced by text; None where it was read from a file
     element_size : target edge length of the mesh, m
     remesh : callable(factor) -> UnitCell with element size multiplied by `factor` (for the error estimate)
     """
@@ -135,3 +148,5 @@ class Job:
     expected_to_fail: bool = False
     reduced_error: float | None = None
     breadboard: Breadboard | None = None
+    tolerances: tuple[Tolerance, ...] = ()
+    vary: object = None

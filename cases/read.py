@@ -18,7 +18,7 @@ from ..geometry.placement import place_gap
 from ..geometry.port import Load, Port
 from ..geometry.stack import Stack
 from . import build
-from .bench_plan import build_breadboard
+from .bench_plan import build_breadboard, build_tolerance
 from .fields import Values, read_table, write_table
 from .job import Expectation, Job, ScanPlan
 from .layers import build_stack, check_conductors, check_sheets, refuse_endless, sized
@@ -114,6 +114,11 @@ def parse_case(text: str, *, path: Path | None = None, overrides: Mapping[str, s
         expected_to_fail=top["expected_verdict"] == "failed",
         reduced_error=single["accuracy"]["reduced_error"] if single["accuracy"]["solver"] == "reduced" else None,
         breadboard=build_breadboard(single["breadboard"], draft.frequencies) if "breadboard" in raw else None,
+        tolerances=tuple(
+            build_tolerance(values, _place("tolerance", n, values), raw.get("parameters", {}), quantities)  # type: ignore[arg-type]
+            for n, values in enumerate(repeated["tolerance"], start=1)
+        ),
+        vary=lambda changes: parse_case(text, path=path, overrides={**(overrides or {}), **changes}),
     )
 
 
@@ -335,6 +340,9 @@ def _resolved(top: Values, single: Mapping[str, Values], repeated: Mapping[str, 
             parts.append(write_table(single[name], table, f"[{name}]"))
     for name, rows in repeated.items():
         for values in rows:
+            if name == "tolerance":  # of parameters, which the resolved case has no more
+                parts.append(f"# tolerance of the parameter {values['parameter']}: {values['value']}, as given\n")
+                continue
             table = REPEATED[name]
             parts.append(
                 write_table(values, table if isinstance(table, Table) else table[values["kind"]], f"[[{name}]]")

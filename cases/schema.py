@@ -287,6 +287,14 @@ BREADBOARD = _table(
     error=Key("ratio", "Wanted error of every scattering parameter.", default=1e-4, low=1e-8, high=1e-2),
 )  # fmt: skip
 
+TOLERANCE = _table(
+    "[[tolerance]]",
+    "How far a parameter may be off in what is built. With [breadboard], the scattering matrix is predicted for both "
+    "ends, so that a comparison with a measurement can fit the parameter within them.",
+    parameter=Key("text", "Name of a parameter of [parameters].", required=True),
+    value=Key("any", "Largest deviation to either side, in the parameter's unit.", required=True),
+)  # fmt: skip
+
 EXPECTED: Mapping[str, str] = MappingProxyType({
     "resistance": "resistance", "reactance": "resistance", "reflection": "level", "gain": "level",
     "cross_polar": "level", "axial_ratio": "level", "efficiency": "ratio",
@@ -310,5 +318,6 @@ SINGLE: Mapping[str, Table] = MappingProxyType({
     "accuracy": ACCURACY, "limits": LIMITS, "breadboard": BREADBOARD,
 })  # fmt: skip
 REPEATED: Mapping[str, Table | Mapping[str, Table]] = MappingProxyType({
-    "layer": LAYER, "sheet": SHEET, "conductor": CONDUCTORS, "port": PORT, "load": LOAD, "expect": EXPECT,
+    "layer": LAYER, "sheet": SHEET, "conductor": CONDUCTORS, "port": PORT, "load": LOAD, "tolerance": TOLERANCE,
+    "expect": EXPECT,
 })  # fmt: skip

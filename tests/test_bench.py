@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
+import re
 import warnings
 from pathlib import Path
 
@@ -18,6 +19,9 @@ from scanward.cases.run import BAD_INPUT, run_case
 from scanward.cases.store import load_result, save_result
 from scanward.geometry.errors import InputError
 from scanward.solver.active import ActiveModel
+from scanward.solver.array_basis import build_array_model
+from scanward.solver.finite_array import FiniteArray
+from scanward.solver.sweep import CellSolver
 from test_reduced_run import CASE
 from test_store import same
 
@@ -30,13 +34,24 @@ edge_taper = "-6 dB"
 points = 2
 largest = 5
 alike = 0.2
+[[tolerance]]
+parameter = "height"
+value = "0.3 mm"
 """
+
+
+def case_text() -> str:
+    text = CASE.replace("points = 3", "points = 2").replace("grid = 5", "grid = 0")
+    text = text.replace("[parameters]", '[parameters]\nheight = "wavelength / 4"').replace(
+        ', "wavelength / 4"]', ', "height"]'
+    )
+    return text + BOARD
 
 
 @pytest.fixture(scope="module")
 def folder(tmp_path_factory) -> Path:
     out = tmp_path_factory.mktemp("board")
-    text = CASE.replace("points = 3", "points = 2").replace("grid = 5", "grid = 0") + BOARD
+    text = case_text()
     assert run_case(parse_case(text), out, refine=False).code == 0
     return out
 
@@ -87,7 +102,7 @@ def test_broken_plans_are_refused(values, words):
 
 
 def test_connected_arrays_are_refused_before_anything_is_solved(tmp_path):
-    text = CASE.replace("-0.23 wavelength", "-wavelength/4").replace("0.23 wavelength", "wavelength/4") + BOARD
+    text = case_text().replace("-0.23 wavelength", "-wavelength/4").replace("0.23 wavelength", "wavelength/4")
     with pytest.raises(InputError, match="conductors of neighbouring cells touch"):
         run_case(parse_case(text), tmp_path)
     (tmp_path / "case.toml").write_text(text, encoding="utf-8")
@@ -197,3 +212,52 @@ def test_results_without_a_breadboard_cannot_be_compared(result, tmp_path, capsy
     uncertainty = ["--magnitude-uncertainty", "0.1 dB", "--phase-uncertainty", "1 deg", "--noise-floor", "-60 dB"]
     assert command.main([*arguments, *uncertainty]) == BAD_INPUT
     assert "predicts no finite array" in capsys.readouterr().err
+
+
+def test_slope_is_that_of_another_array(result):
+    """SECOND METHOD: the array of a cell 0.15 mm higher, predicted by itself."""
+    (slope,) = result.bench.slopes
+    assert (slope.name, slope.unit, slope.tolerance) == ("height", "mm", pytest.approx(0.3))
+    job = parse_case(case_text(), overrides={"height": "wavelength / 4 + 0.15 mm"})
+    solver = CellSolver(job.cell, float(job.frequency[-1]))
+    model, _ = build_array_model(solver, (float(job.frequency[0]), float(job.frequency[-1])))
+    moved = FiniteArray(model, float(job.frequency[0]), job.breadboard.cells).scattering()
+    change = moved - result.bench.scattering[0]
+    assert np.abs(change - 0.15 * slope.derivative[0]).max() < 0.1 * np.abs(change).max()
+
+
+def test_a_planted_height_is_found_from_invented_data(folder, result, tmp_path, capsys):
+    """CLOSED: data of an array 0.2 mm higher, noise added, refute the nominal prediction; the fit moves the height by
+    0.2 mm."""
+    (slope,) = result.bench.slopes
+    random = np.random.default_rng(8)
+    noise = 1e-3 * random.normal(size=(2, *result.bench.scattering.shape)) / np.sqrt(2)
+    measured = result.bench.scattering + 0.2 * slope.derivative + noise[0] + 1j * noise[1]
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")
+        import skrf
+    network = skrf.Network(f=result.bench.frequency, f_unit="Hz", s=measured, z0=50, comments="INVENTED")
+    network.write_touchstone("moved", str(tmp_path), form="ri")
+    files = ["--measured", str(tmp_path / "moved.s11p"), "--map", str(folder / "breadboard-ports.csv")]
+    uncertainty = ["--magnitude-uncertainty", "0.05 dB", "--phase-uncertainty", "0.3 deg", "--noise-floor", "-60 dB"]
+    command.main(["compare", str(folder), *files, *uncertainty, "--out", str(tmp_path / "out")])
+    shown = capsys.readouterr().out
+    move = re.search(r"height moves by ([-+0-9.]+)", shown)
+    assert move, shown
+    assert float(move.group(1)) == pytest.approx(0.2, abs=0.05)
+
+
+@pytest.mark.parametrize(
+    ("text", "words"),
+    [
+        ('parameter = "hight"\nvalue = "0.3 mm"', "no parameter 'hight'"),
+        ('parameter = "height"\nvalue = "0.3 deg"', "value"),
+        ('parameter = "height"\nvalue = "-1 mm"', "not above zero"),
+        ('parameter = "height"', "value"),
+    ],
+)
+def test_bad_tolerances_are_refused(text, words):
+    case = case_text().split("[[tolerance]]")[0] + "[[tolerance]]\n" + text
+    with pytest.raises(InputError) as fault:
+        parse_case(case)
+    assert words in str(fault.value) and "[[tolerance]]" in str(fault.value)
