@@ -82,7 +82,7 @@ def compare(
         fit=parameters or None,
         wanted=wanted,
     )
-    folder = Path(out) if out else Path(result).parent
+    folder = Path(out) if out else Path(result) if Path(result).is_dir() else Path(result).parent
     try:
         files = write_comparison(folder, comparison)
     except OSError as fault:

@@ -70,7 +70,7 @@ def diagnose(data: MeasuredScattering, prediction: Prediction, parameters: tuple
         measured,
         prediction,
         data.uncertainty,
-        lambda values: _four(values, data, prediction, parameters, ()),
+        lambda values, made: _four(values, data, prediction, parameters, made),
     )
     undone = exchanged(measured, swaps)
     fits = Fits(plain, *_four(undone, data, prediction, parameters, swaps))

@@ -39,14 +39,17 @@ def exchanged(measured: Complexes, swaps: tuple[Swap, ...]) -> Complexes:
 
 
 def find_swaps(
-    measured: Complexes, prediction: Prediction, uncertainty: Uncertainty, fit: Callable[[Complexes], tuple[Fit, ...]]
+    measured: Complexes,
+    prediction: Prediction,
+    uncertainty: Uncertainty,
+    fit: Callable[[Complexes, tuple[Swap, ...]], tuple[Fit, ...]],
 ) -> tuple[tuple[Swap, ...], tuple[str, ...]]:
     """Look for up to three exchanged pairs of ports, one after the other.
 
     Candidates come from the magnitudes, which cable lengths leave alone, and from the complex values. Each is judged by
-    `fit`, which explains measured data by nothing, cables, parameters, or both; an exchange must beat the cheapest
-    explanation without one by a margin that rises with the number of pairs looked at, and halve the misfit of the two
-    ports against the same kind of explanation without it.
+    `fit`, which explains measured data (and is told which exchanges were made to them) by nothing, cables, parameters,
+    or both; an exchange must beat the cheapest explanation without one by a margin that rises with the number of pairs
+    looked at, and halve the misfit of the two ports against the same kind of explanation without it.
 
     Returns
     -------
@@ -55,13 +58,13 @@ def find_swaps(
     n = measured.shape[1]
     found: list[Swap] = []
     pairs = n * (n - 1) / 2
-    current = fit(measured)
+    current = fit(measured, ())
     while len(found) < MOST_SWAPS:
         trials = []
         cheap = current[cheapest(current)]
         for i, j in _candidates(measured, prediction, uncertainty):
             other = _exchange(measured, i, j)
-            again = fit(other)
+            again = fit(other, (*found, Swap(i, j, 0.0, 0.0)))
             kind = cheapest(again)
             new = again[kind]
             before = _misfit(measured, current[kind], prediction, uncertainty, i, j)

@@ -3,6 +3,7 @@
 import numpy as np
 import pytest
 from coupling_model import panel, scattering
+from scanward.cases.bench_fit import _pairs, fit_bench, port_gain
 from scanward.cases.comparison import compare, compare_files
 from scanward.cases.comparison_charts import cut_groups
 from scanward.cases.comparison_report import write_comparison
@@ -12,7 +13,7 @@ from scanward.cases.invented_measurement import MARK, Plant, invent, write_inven
 from scanward.cases.measured_scattering import MeasuredScattering
 from scanward.cases.pattern_comparison import PatternUncertainty
 from scanward.cases.scan_synthesis import synthesise
-from scanward.cases.support import FALSE_ALARM
+from scanward.cases.support import FALSE_ALARM, judge_support
 from scanward.cases.uncertainty import Uncertainty
 
 USE = Uncertainty.from_decibel(0.1, np.radians(1.0), -65.0)
@@ -44,9 +45,6 @@ def test_clean_data_support_the_prediction():
 
 def test_false_alarms_stay_below_what_is_stated():
     """Binomial: with at most one false alarm in a hundred, more than 6 of 200 have a chance below 0.5 per cent."""
-    from scanward.cases.bench_fit import fit_bench
-    from scanward.cases.support import judge_support
-
     small, alarms = panel(3, 3, points=5), 0
     for seed in range(200):
         data = measured(Plant(seed=seed), small)
@@ -120,6 +118,38 @@ def test_planted_cables_come_back():
     assert np.all(np.abs(fit.delay - DELAY) < 5 * fit.delay_error) and np.max(fit.delay_error) < 1e-12
     assert np.all(np.abs(fit.loss - LOSS) < 5 * fit.loss_error) and np.max(fit.loss_error) < 0.03
     assert c.support.contradicted and c.corrected_support.holds and c.supported
+
+
+def test_the_normal_matrix_is_that_of_the_written_out_jacobian():
+    """CLOSED: J^T J with a row per coefficient, 1 in the columns of its two ports (2 in one for a reflection)."""
+    weight = RANDOM.uniform(0, 1, (2, 4, 4))
+    i, j = np.indices((4, 4)).reshape(2, -1)
+    jacobian = np.eye(4)[i] + np.eye(4)[j]
+    wanted = jacobian.T @ (weight.sum(axis=0).ravel()[:, None] * jacobian)
+    np.testing.assert_allclose(_pairs(weight), wanted, rtol=1e-12)
+
+
+def test_errors_stated_for_cables_are_the_scatter_of_many_trials():
+    small, rest = panel(3, 3, points=5, sensitive=False), {"cables": True, "start": np.zeros(9)}
+    fits = [fit_bench(invent(small, USE, Plant(seed=s)), small, USE, **rest) for s in range(80)]
+    for name in ("delay", "loss"):
+        scatter = np.std([getattr(fit, name) for fit in fits], axis=0)
+        np.testing.assert_allclose(scatter, getattr(fits[0], f"{name}_error"), rtol=0.3)
+
+
+def test_a_cable_delays_and_fades_as_stated():
+    """CLOSED: 3 dB at the middle, 3 sqrt(f / f_c) dB elsewhere; exp(-j w t) lags, exp(+j w t) convention."""
+    gain = port_gain(np.array([1e9, 3e9]), np.array([1e-10]), np.array([3.0]))[:, 0]
+    np.testing.assert_allclose(20 * np.log10(np.abs(gain)), [-3 * np.sqrt(0.5), -3 * np.sqrt(1.5)], rtol=1e-12)
+    np.testing.assert_allclose(np.degrees(np.angle(gain)), [-36, -108], rtol=1e-12)
+
+
+def test_a_stated_decibel_is_its_share_of_the_magnitude():
+    """CLOSED: d(20 log10 x) = 8.686 dx / x."""
+    use = Uncertainty.from_decibel(0.08686, 0.01, -60.0)
+    along, across = use.deviations(np.array([0.5, 0.0]))
+    np.testing.assert_allclose(along, [np.sqrt(0.005**2 + 0.5e-6), np.sqrt(0.5e-6)], rtol=1e-5)
+    np.testing.assert_allclose(across, [np.sqrt(0.005**2 + 0.5e-6), np.sqrt(0.5e-6)], rtol=1e-5)
 
 
 def test_cables_are_reported_and_never_applied_silently():

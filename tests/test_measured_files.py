@@ -166,16 +166,17 @@ def test_nothing_is_interpolated_across_a_gap_left_out():
     assert covered.tolist() == [True, False]
 
 
-def test_a_fine_measurement_resolves_cables_the_coarse_prediction_cannot(tmp_path):
+@pytest.mark.parametrize("swapped", [(), ((1, 6),)])
+def test_a_fine_measurement_resolves_cables_the_coarse_prediction_cannot(swapped, tmp_path):
     """Spacing 50 MHz leaves 20 ns open; the measurement's own 5 MHz tell 2 x 14 ns of cable."""
     from scanward.cases.comparison import compare
 
-    p, fine = panel(3, 3, points=9, sensitive=False), panel(3, 3, points=81, sensitive=False)
-    use, delay = Uncertainty.from_decibel(0.1, np.radians(1), -70), np.linspace(9e-9, 14e-9, 9)
-    files, port_map = write_invented(tmp_path, fine, use, Plant(delay=delay))
+    p, fine = panel(4, 4, points=9, sensitive=False), panel(4, 4, points=81, sensitive=False)
+    use, delay = Uncertainty.from_decibel(0.1, np.radians(1), -70), np.linspace(9e-9, 14e-9, 16)
+    files, port_map = write_invented(tmp_path, fine, use, Plant(delay=delay, swapped=swapped))
     data, p = read_measurement(files, port_map, p, use)
     found = compare(p, data).diagnosis
-    assert found.cabled
+    assert found.cabled and tuple((s.one, s.two) for s in found.swaps) == swapped
     np.testing.assert_allclose(found.fits.chosen.delay, delay, atol=2e-12)
 
 
