@@ -12,6 +12,7 @@ from .result import Result
 Rows = list[tuple[str, ...]]
 WORTH = -40.0  # dB: couplings below are not worth the measuring for the active reflection
 TOLD = 12  # couplings listed
+AIM = 0.02  # r.m.s. error of the active reflection that measured couplings are to give
 
 
 def bench_facts(result: Result) -> list[tuple[str, str]]:
@@ -28,6 +29,8 @@ def bench_facts(result: Result) -> list[tuple[str, str]]:
         ("Rows that are enough", enough_text(result)),
         ("Power at broadside, middle of the band", budget_text(bench.budget)),
         ("Strongest coupling", _strongest(result)),
+        *_tolerance_row(result),
+        ("What to measure, and how well", measuring_text(result)),
         ("Accuracy of every scattering parameter", _accuracy(result)),
     ]
     return rows
@@ -55,6 +58,35 @@ def budget_text(budget: np.ndarray) -> str:
     names = BUDGET.split(", ")
     told = [f"{name} {100 * share:.3g} %" for name, share in zip(names, budget, strict=True) if abs(share) >= 5e-4]
     return ", ".join(told)
+
+
+def _tolerance_row(result: Result) -> list[tuple[str, str]]:
+    bench = result.bench
+    if bench is None or not bench.slopes:
+        return []
+    told = "; ".join(
+        f"{s.name} {s.nominal:.5g} +/- {s.tolerance:.3g} {s.unit}: coefficients move by up to "
+        f"{s.tolerance * np.abs(s.derivative).max():.3f}"
+        for s in bench.slopes
+    )
+    return [("Toleranced parameters", told)]
+
+
+def measuring_text(result: Result) -> str:
+    """How many coefficients into the centre element count, how exact each must be for the active reflection to be known
+    to AIM (r.m.s., independent errors), and what those left out add up to at most."""
+    bench = result.bench
+    assert bench is not None
+    f = len(bench.frequency) // 2
+    port = int(np.flatnonzero(bench.ports[:, 0] == bench.centre)[0])
+    row = np.abs(bench.scattering[f, port])
+    high = decibel(row**2) > WORTH
+    each = AIM / np.sqrt(max(int(high.sum()), 1))
+    return (
+        f"{int(high.sum())} of {len(row)} coefficients into the centre element lie above {WORTH:g} dB; to know its "
+        f"active reflection to {AIM:g} at any scan, each must be within {each:.4f} ({decibel(each**2):.0f} dB r.m.s.); "
+        f"those left out add up to at most {row[~high].sum():.3f}"
+    )
 
 
 def coupling_rows(result: Result) -> Rows:

@@ -20,7 +20,7 @@ CODE_FOLDERS = ("geometry", "solver")
 
 def fingerprint(job: Job) -> str:
     """Hash of all that decides the numbers: resolved case, mesh, stack, scan, tolerance, the program's own code."""
-    digest = hashlib.sha256(f"{__version__}\n{job.tolerance!r}\n{job.text}\n".encode())
+    digest = hashlib.sha256(f"{__version__}\n{job.tolerance!r}\n{job.text}\n{job.tolerances!r}\n".encode())
     mesh, stack, scan = job.cell.mesh, job.cell.stack, job.scan.points
     digest.update(repr((job.cell.ground, None if stack is None else (stack.layers, stack.sheets))).encode())
     for array in (mesh.points, mesh.triangles, mesh.segments, mesh.segment_radius, scan.u, scan.v, scan.phi):

@@ -340,8 +340,7 @@ def _resolved(top: Values, single: Mapping[str, Values], repeated: Mapping[str, 
             parts.append(write_table(single[name], table, f"[{name}]"))
     for name, rows in repeated.items():
         for values in rows:
-            if name == "tolerance":  # of parameters, which the resolved case has no more
-                parts.append(f"# tolerance of the parameter {values['parameter']}: {values['value']}, as given\n")
+            if name == "tolerance":  # of parameters, which the resolved case has no more; the job keeps them apart
                 continue
             table = REPEATED[name]
             parts.append(
