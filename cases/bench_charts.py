@@ -18,7 +18,9 @@ def bench_figures(result: Result) -> tuple[Drawing, ...]:
     """All figures of a breadboard; none without one."""
     if result.bench is None:
         return ()
-    return (coupling_map(result), edge_map(result), centre_pattern(result), size_chart(result))
+    return (
+        coupling_map(result), edge_map(result), centre_pattern(result), array_pattern(result), size_chart(result)
+    )  # fmt: skip
 
 
 def coupling_map(result: Result) -> Drawing:
@@ -123,6 +125,35 @@ def centre_pattern(result: Result) -> Drawing:
         "breadboard-pattern", data, "image/svg+xml",
         "Embedded pattern of the element nearest to the middle, all others terminated, middle of the band.",
         "Gain over angle in every cut, finite and infinite array.",
+    )  # fmt: skip
+
+
+def array_pattern(result: Result) -> Drawing:
+    """Gain of the whole array from its true embedded patterns, scanned within each cut."""
+    bench = result.bench
+    assert bench is not None
+    theta, hues = np.degrees(bench.cut_theta), HUES
+    with style():
+        figure = canvas(WIDTH, 2.7)
+        axes = figure.subplots(1, len(bench.cut_phi), squeeze=False, sharey=True)[0]
+        for c, (axis, phi) in enumerate(zip(axes, bench.cut_phi, strict=True)):
+            for s in range(len(bench.scan)):
+                angle = float(bench.scan.theta[s])
+                if s and abs(float(bench.scan.phi[s]) - float(phi)) > 1e-6:
+                    continue  # a beam of another cut
+                n = 0 if not s else 1 + (s - 1) % 2
+                axis.plot(theta, bench.array_pattern[s, c], color=hues[n], linewidth=1.2, label=f"to θ = {arc(angle)}")
+            axis.set(xlabel="θ (deg)", xlim=(theta[0], theta[-1]), xticks=(-60, -30, 0, 30, 60))
+            axis.set_title(f"cut at φ = {arc(float(phi))}")
+        top = float(np.nanmax(bench.array_pattern))
+        axes[0].set(ylabel="realised gain, co (dBi)", ylim=(top - 40, top + 3))
+        axes[-1].legend(frameon=False, fontsize=7, loc="upper left")
+        data = render(figure)
+    return Drawing(
+        "breadboard-array-pattern", data, "image/svg+xml",
+        "The whole breadboard with the case's taper, from the true embedded patterns of all elements, at broadside and "
+        "scanned in each cut, middle of the band.",
+        "Gain of the array over angle for several scan directions.",
     )  # fmt: skip
 
 

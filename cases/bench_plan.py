@@ -31,7 +31,13 @@ def build_breadboard(values: Mapping[str, Any], band: Floats) -> Breadboard:
     cells = _cells(values)
     if len(cells) > MOST_CELLS:
         raise InputError(f"the array has {len(cells)} elements.", where=WHERE, allowed=f"at most {MOST_CELLS}")
-    dummy = _rim(cells, values["rim"])
+    dummy = _rim(cells, values["rim"]) | _listed_dummies(cells, values["dummies"])
+    if (values["load"] is None) == (values["termination"] == "loaded"):
+        raise InputError(
+            f"termination is '{values['termination']}' and load is {values['load'] or 'not given'}.", where=WHERE,
+            allowed="load together with termination = \"loaded\", and only then",
+        )  # fmt: skip
+    termination = values["load"] if values["termination"] == "loaded" else values["termination"]
     if dummy.all():
         raise InputError(
             f"with a rim of {values['rim']} no element is left that is led out.", where=f"{WHERE}, key 'rim'",
@@ -43,7 +49,7 @@ def build_breadboard(values: Mapping[str, Any], band: Floats) -> Breadboard:
     if len(band) == 1:
         frequency = band.copy()
     return Breadboard(
-        cells, dummy, values["termination"], frequency, _taper(cells, pedestal), values["alike"], values["largest"],
+        cells, dummy, termination, frequency, _taper(cells, pedestal), values["alike"], values["largest"],
         values["error"],
     )  # fmt: skip
 
@@ -126,6 +132,20 @@ def _rim(cells: Ints, rings: int) -> NDArray[np.bool_]:
         rim |= ring
         left -= ring
     return np.array([tuple(cell) in rim for cell in cells.tolist()], dtype=bool)
+
+
+def _listed_dummies(cells: Ints, listed: Any) -> NDArray[np.bool_]:
+    """Elements named as dummies by [row, column], which is cell (column, row)."""
+    dummy = np.zeros(len(cells), dtype=bool)
+    for row, column in [] if listed is None else np.array(listed, dtype=np.int64).reshape(-1, 2):
+        hit = (cells == [column, row]).all(axis=1)
+        if not hit.any():
+            raise InputError(
+                f"there is no element [{row}, {column}].", where=f"{WHERE}, key 'dummies'",
+                allowed="[row, column] of elements of the array",
+            )  # fmt: skip
+        dummy |= hit
+    return dummy
 
 
 def _taper(cells: Ints, pedestal: float) -> Floats:

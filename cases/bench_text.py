@@ -21,7 +21,8 @@ def bench_facts(result: Result) -> list[tuple[str, str]]:
     if bench is None or result.job.breadboard is None:
         return []
     live, board = len(bench.ports), result.job.breadboard
-    dummies = f", {int(bench.dummy.sum())} of them dummies ({board.termination})" if bench.dummy.any() else ""
+    ends = board.termination if isinstance(board.termination, str) else f"{board.termination:g} ohm"
+    dummies = f", {int(bench.dummy.sum())} of them dummies ({ends})" if bench.dummy.any() else ""
     low, high = bench.frequency[0] / 1e9, bench.frequency[-1] / 1e9
     rows = [
         ("Array", f"{len(bench.cells)} elements{dummies}, {live} ports led out"),

@@ -77,7 +77,7 @@ class Breadboard:
     ----------
     cells : (n, 2) integer cells m, n at ``m a + n b`` that carry an element
     dummy : (n,) whether its ports are terminated and not led out
-    termination : "matched", "open" or "short", of the dummies
+    termination : "matched", "open" or "short", or a resistance in ohm, of the dummies
     frequency : (n_freq,) Hz
     taper : (n,) amplitudes of the excitation
     alike : largest |difference| of the centre's active reflection with which the array counts as large enough
@@ -87,7 +87,7 @@ class Breadboard:
 
     cells: Ints
     dummy: NDArray[np.bool_]
-    termination: str
+    termination: str | float
     frequency: Floats
     taper: Floats
     alike: float

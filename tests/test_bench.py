@@ -64,7 +64,7 @@ def result(folder):
 def plan(**values):
     defaults = {
         "rows": None, "columns": None, "missing": None, "cells": None, "rim": 0, "termination": "matched",
-        "points": None, "edge_taper": 0.0, "alike": 0.05, "largest": 9, "error": 1e-4,
+        "points": None, "edge_taper": 0.0, "alike": 0.05, "largest": 9, "error": 1e-4, "dummies": None, "load": None,
     }  # fmt: skip
     return build_breadboard({**defaults, **values}, np.linspace(5e9, 6e9, 11))
 
@@ -79,6 +79,8 @@ def test_cells_dummies_and_taper_of_a_plan():
     assert board.taper[corner] == pytest.approx(0.01)
     hexagon = plan(cells=np.array([[0, 0], [1, 0], [0, 1], [-1, 0], [0, -1], [1, -1], [-1, 1]]))
     assert len(hexagon.cells) == 7 and np.all(hexagon.taper == 1)
+    loaded = plan(rows=2, columns=3, dummies=np.array([[1, 2]]), termination="loaded", load=75.0)
+    assert loaded.termination == 75.0 and loaded.cells[loaded.dummy].tolist() == [[2, 1]]
 
 
 @pytest.mark.parametrize(
@@ -93,6 +95,9 @@ def test_cells_dummies_and_taper_of_a_plan():
         ({"cells": np.array([[0, 0], [0, 0]])}, "listed twice"),
         ({"cells": np.array([[0, 0]]), "missing": np.array([[0, 0]])}, "goes with rows"),
         ({"rows": 64, "columns": 64}, "at most 1600"),
+        ({"rows": 2, "columns": 2, "dummies": np.array([[2, 0]])}, "no element [2, 0]"),
+        ({"rows": 2, "columns": 2, "termination": "loaded"}, "load together with"),
+        ({"rows": 2, "columns": 2, "load": 75.0}, "load together with"),
     ],
 )
 def test_broken_plans_are_refused(values, words):
@@ -172,7 +177,7 @@ def test_report_has_the_breadboard(folder, result):
     first = coupling_rows(result)[0]
     assert first[0] in ("(1, 0)", "(0, 1)") and first[-1] == "yes"
     figures = {path.stem for path in (folder / "figures").iterdir()}
-    assert {"breadboard-coupling", "breadboard-edges", "breadboard-pattern", "breadboard-sizes"} < figures
+    assert {f"breadboard-{name}" for name in ("coupling", "edges", "pattern", "array-pattern", "sizes")} < figures
 
 
 def test_waveguide_simulators_show_the_angle_of_their_width(result):
