@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     import xarray
 
 FILE, MAP_FILE = "breadboard", "breadboard-ports.csv"
+STEPS = 12  # scan angles of a comparison from broadside to the cone's edge
 GUIDE_NUMBERS = ("frequency", "width", "height", "across", "theta", "phi", "level", "single")
 
 
@@ -173,10 +174,8 @@ def to_prediction(result: Result) -> Prediction:
     assert bench is not None
     names, ports = result.port_names, bench.ports
     drive = np.array([port.drive for port in job.cell.ports])
-    infinite = InfinitePrediction(
-        np.column_stack([bench.scan.u, bench.scan.v]), _infinite_matrices(result), names, bench.coupling_cells,
-        bench.coupling,
-    )  # fmt: skip
+    directions, matrices = _infinite(result)
+    infinite = InfinitePrediction(directions, matrices, names, bench.coupling_cells, bench.coupling)
     first = int(np.flatnonzero(drive)[0])
     column, row = (int(x) for x in bench.cells[bench.centre])
     middle = float(bench.frequency[len(bench.frequency) // 2])
@@ -205,13 +204,19 @@ def to_prediction(result: Result) -> Prediction:
     )
 
 
-def _infinite_matrices(result: Result) -> np.ndarray:
-    """Active scattering matrices (n_freq, n_scan, p, p) of the infinite array at the breadboard's scan directions."""
+def _infinite(result: Result) -> tuple[np.ndarray, np.ndarray]:
+    """Directions (n, 2) along the cuts, to either side, and the active scattering matrices (n_freq, n, p, p) of the
+    infinite array there."""
     from .ask import ask
 
-    bench = result.bench
+    bench, cone = result.bench, result.job.scan.cone
     assert bench is not None
-    if result.stored is not None:
-        return ask(result, bench.frequency, bench.scan).scattering
-    reach = np.einsum("fsp,pq->fspq", bench.infinite, np.eye(bench.infinite.shape[-1]))
-    return np.nan_to_num(reach)
+    if result.stored is None:  # a direct run: what the breadboard's own scan directions hold
+        matrices = np.einsum("fsp,pq->fspq", bench.infinite, np.eye(bench.infinite.shape[-1]))
+        return np.column_stack([bench.scan.u, bench.scan.v]), np.nan_to_num(matrices)
+    theta = np.linspace(0, cone, STEPS + 1)[1:]
+    turns = np.concatenate([bench.cut_phi, bench.cut_phi + np.pi])
+    scan = ScanPoints.from_angles(
+        np.append(0.0, np.tile(theta, len(turns))), np.append(0.0, np.repeat(turns, len(theta)))
+    )
+    return np.column_stack([scan.u, scan.v]), ask(result, bench.frequency, scan).scattering

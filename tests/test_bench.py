@@ -266,3 +266,18 @@ def test_bad_tolerances_are_refused(text, words):
     with pytest.raises(InputError) as fault:
         parse_case(case)
     assert words in str(fault.value) and "[[tolerance]]" in str(fault.value)
+
+
+def test_the_invented_demonstration_is_seen_through(result, folder, tmp_path, capsys):
+    """CLOSED: what the script plants (a parameter off, cables, an exchanged pair) is told; every file says INVENTED."""
+    from invent_measurement import write_demo
+
+    plant, arguments = write_demo(folder, tmp_path)
+    for file in tmp_path.iterdir():
+        assert "INVENTED" in file.read_text(encoding="ascii").splitlines()[0]
+    command.main([*arguments, "--out", str(tmp_path / "out")])
+    shown = capsys.readouterr().out
+    assert "INVENTED" in shown and "cables fitted" in shown
+    move = re.search(r"height moves by ([-+0-9.]+)", shown)
+    assert move and float(move.group(1)) == pytest.approx(plant.moves["height"], abs=0.08), shown
+    assert "exchanged" in shown
