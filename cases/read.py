@@ -118,8 +118,20 @@ def parse_case(text: str, *, path: Path | None = None, overrides: Mapping[str, s
             build_tolerance(values, _place("tolerance", n, values), raw.get("parameters", {}), quantities)  # type: ignore[arg-type]
             for n, values in enumerate(repeated["tolerance"], start=1)
         ),
-        vary=lambda changes: parse_case(text, path=path, overrides={**(overrides or {}), **changes}),
+        vary=_Variation(text, path, dict(overrides or {})),
     )
+
+
+@dataclass(frozen=True)
+class _Variation:
+    """The case with more parameters replaced; a job that holds it can be sent to another process."""
+
+    text: str
+    path: Path | None
+    overrides: dict[str, str]
+
+    def __call__(self, changes: Mapping[str, str]) -> Job:
+        return parse_case(self.text, path=self.path, overrides={**self.overrides, **changes})
 
 
 def _parse_toml(text: str) -> dict[str, object]:
