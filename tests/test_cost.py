@@ -80,18 +80,14 @@ def test_maxima_are_sought_for_every_driven_port():
     assert more == 3 * cost.SURVEY_POINTS
 
 
-@pytest.mark.slow
-@pytest.mark.parametrize("name", ["strip_dipole", "crossed_dipoles_circular", "printed_dipole_blind"])
-def test_expected_cost_is_that_of_the_run(name, tmp_path):
-    """Within the factor of 2 that `check` states; in time of the processor, so that other programs do not count."""
-    job = read_case(find_case(name))
+def test_expected_full_solutions_are_those_of_a_run(tmp_path):
+    """Within the factor of 2 that `check` states; times are measured by tests/benchmarks/cost.py."""
+    job = read_case(find_case("strip_dipole"))
     found = cost.estimate_cost(job)
-    begun = time.process_time()
-    outcome = run_case(job, tmp_path)
-    spent = time.process_time() - begun
-    assert 0.5 < spent / (found.seconds + found.estimate_seconds + found.writing_seconds) < 2
+    outcome = run_case(job, tmp_path, refine=False)
     assert outcome.result is not None and outcome.result.certificate is not None
     assert 0.5 < outcome.result.certificate.full_solutions / found.solutions < 2
+    assert found.seconds > 0 and found.writing_seconds > 0
 
 
 def test_kinds_of_cells():
