@@ -1,7 +1,6 @@
 """Expected cost: growth laws and the choice of the cell that is timed."""
 
 import dataclasses
-import time
 
 import numpy as np
 import pytest
