@@ -151,6 +151,8 @@ def _verdict(limit: Limit, result: Result) -> Verdict:
     theta, phi = float(scan.theta[i]), float(scan.phi[i])
     surveyed = worst_surveyed(limit, job, result.survey, ports)
     if surveyed is not None:
+        if np.isnan(surveyed.worst.value):
+            return Verdict(limit, OPEN, False, reason="the surveyed values are not all finite")
         points += surveyed.points
         if surveyed.worst.value > spot.value + SAME_LEVEL:
             spot = surveyed.worst

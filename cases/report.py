@@ -21,7 +21,7 @@ from .plot import Drawing, driven_ports
 from .progress import duration
 from .result import CONVENTIONS, Result
 from .surface_waves import WHY, trouble, wave_header, wave_rows, wave_summary
-from .survey_text import HARM, blindness_texts, searched_text, signed_rows
+from .survey_text import FINDING_HEADER, HARM, blindness_texts, finding_rows, searched_text, signed_rows
 
 MARKS = {MET: "met", FAILED: "failed", CLOSE: "close", OPEN: "open"}
 TABLE_ANGLES = np.radians([0, 15, 30, 45, 60, 75])
@@ -58,10 +58,12 @@ def report_text(result: Result, figures: Sequence[Drawing]) -> str:
         failure=result.failure,
         verdicts=[_verdict_row(verdict) for verdict in verdicts],
         signed=signed_rows(result),
-        blindness=blindness_texts(result),
+        blindness=(blindness := blindness_texts(result)),
+        found=finding_rows(result),
+        found_header=FINDING_HEADER,
         surveyed=result.survey is not None,
         searched="" if result.survey is None else searched_text(result.survey),
-        harm=HARM if any(item.inside for item in blindness_texts(result)) else "",
+        harm=HARM if any(item.inside for item in blindness) else "",
         bench=bench_facts(result),
         bench_couplings=coupling_rows(result),
         bench_guides=guide_rows(result),

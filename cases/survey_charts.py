@@ -30,7 +30,8 @@ from .plot import (
 )  # fmt: skip
 from .result import Result
 from .surface_waves import near_orders, surface_waves_at
-from .survey_text import meeting_angle, short_cause
+from .survey_advice import meeting_angle
+from .survey_text import short_cause
 
 MOST_MAPS = 6
 FLOOR = -30.0  # dB

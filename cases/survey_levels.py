@@ -31,7 +31,7 @@ class Spot:
 
 @dataclass(frozen=True)
 class Surveyed:
-    """The highest value found, and at how many points; a peak counts as one."""
+    """The highest value found (one that is not a number counts as highest), and at how many points; a peak is one."""
 
     worst: Spot
     points: int
@@ -52,9 +52,9 @@ def worst_surveyed(limit: Limit, job: Job, survey: Survey | None, ports: list[in
     for f, frequency in enumerate(maps.frequency):
         pick = inside & maps.solved[f]
         values = _values(limit.quantity, job, survey, f, pick, ports)  # (n, n_port or 1)
-        if not values.size or np.isnan(values).all():
+        if not values.size:
             continue
-        n, p = np.unravel_index(np.nanargmax(values), values.shape)
+        n, p = np.unravel_index(np.argmax(values), values.shape)
         port = ports[int(p)] if limit.quantity == "reflection" else None
         spots.append(Spot(float(values[n, p]), float(frequency), float(u[pick][n]), float(v[pick][n]), port))
         points += len(values)
@@ -63,7 +63,9 @@ def worst_surveyed(limit: Limit, job: Job, survey: Survey | None, ports: list[in
             if peak.theta <= limit.cone + 1e-9 and peak.port in ports:
                 spots.append(Spot(float(decibel(peak.power)), peak.frequency, peak.u, peak.v, peak.port))
                 points += 1
-    return Surveyed(max(spots, key=lambda spot: spot.value), points) if spots else None
+    if not spots:
+        return None
+    return Surveyed(max(spots, key=lambda spot: (np.isnan(spot.value), spot.value)), points)
 
 
 def _values(quantity: str, job: Job, survey: Survey, f: int, pick: NDArray[np.bool_], ports: list[int]) -> Floats:
@@ -77,7 +79,7 @@ def _values(quantity: str, job: Job, survey: Survey, f: int, pick: NDArray[np.bo
     co, cross = _co_cross(job, field, np.arctan2(v, u)[pick])
     with np.errstate(invalid="ignore", divide="ignore"):
         if quantity == "cross_polar":
-            return decibel(cross / co)[:, None]
+            return decibel(np.divide(cross, co, out=np.where(np.isnan(co), np.nan, np.inf), where=co > 0))[:, None]
         middle = len(maps.axis) // 2
         broadside = _co_cross(job, maps.field[f][[middle], [middle]], np.zeros(1))[0]
         return (decibel(broadside) - decibel(co))[:, None]

@@ -2,24 +2,21 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
-from ..geometry.lattice import Lattice
-from ..geometry.stack import Stack
-from ..solver.guided_waves import guided_waves
-from ..solver.pattern import LIGHT_SPEED, decibel
+from ..solver.pattern import decibel
 from ..solver.survey import Blindness, Peak, Survey
 from .job import Job
 from .judge import degrees
 from .result import Result
+from .survey_advice import advice
 
 HARM = (
     "In these directions most of the available power of every element returns into its transmitter at once. Keep them "
     "out of the beam-steering tables, or prove that the transmitters survive."
 )
-LESS = (0.05, 0.10)  # of spacing, thickness and permittivity, for the advice
 
 
 @dataclass(frozen=True)
@@ -103,7 +100,10 @@ def searched_text(survey: Survey) -> str:
     """What was looked at."""
     maps = survey.scan_map
     count = int(maps.solved.sum())
-    return f"{count} points of {len(maps.frequency)} frequencies, and searches from all maxima, circles and roots"
+    return (
+        f"{count} points of {len(maps.frequency)} frequencies, and searches from all maxima, circles and roots; error "
+        f"of the active reflection {survey.error:.1e}"
+    )
 
 
 def least_theta(one: Blindness) -> float:
@@ -113,11 +113,54 @@ def least_theta(one: Blindness) -> float:
 
 def blindness_texts(result: Result) -> list[BlindnessText]:
     """Every blindness and strong mismatch in words, those inside the scan cone first."""
-    survey = result.survey
-    if survey is None:
-        return []
-    found = sorted(survey.blindnesses, key=lambda one: (least_theta(one) > result.job.scan.cone, least_theta(one)))
-    return [_text(one, result) for one in found]
+    return [_text(one, result) for one in _by_place(result)]
+
+
+def _by_place(result: Result) -> list[Blindness]:
+    found = () if result.survey is None else result.survey.blindnesses
+    return sorted(found, key=lambda one: (least_theta(one) > result.job.scan.cone, least_theta(one)))
+
+
+def finding_rows(result: Result) -> list[tuple[str, ...]]:
+    """One row of text for each of `blindness_texts`, under `FINDING_HEADER`."""
+    rows = []
+    for one in _by_place(result):
+        worst = one.worst
+        rows.append((
+            "Blindness" if one.is_blind else "Strong mismatch",
+            f"{degrees(worst.theta)}, {azimuth_text(worst.phi)}" + (" and opposite" if one.mirrored else ""),
+            f"{worst.frequency / 1e9:.6g} GHz",
+            f"{100 * min(worst.power, 9.99):.4g} %",
+            _width_text(worst.width) if np.isfinite(worst.width) else "",
+            short_cause(one),
+            _cones(one, result.job),
+        ))  # fmt: skip
+    return rows
+
+
+FINDING_HEADER = (
+    "Found", "Worst at theta, phi", "Frequency", "Comes back", "Width at half power", "Cause", "Inside",
+)  # fmt: skip
+
+
+def _cones(one: Blindness, job: Job) -> str:
+    """Inside which of the case's cones it comes."""
+    reached = least_theta(one)
+    names = ["scan cone"] if reached <= job.scan.cone else []
+    if any(limit.quantity == "reflection" and reached <= limit.cone for limit in job.limits):
+        names.append("limit's cone")
+    return " and ".join(names) or "neither cone"
+
+
+def _against_limits(one: Blindness, job: Job) -> str:
+    """On which side of the cones of the reflection limits it lies, in a sentence; empty without such a limit."""
+    cones = [limit.cone for limit in job.limits if limit.quantity == "reflection"]
+    if not cones:
+        return ""
+    wide, reached = max(cones), least_theta(one)
+    if reached <= wide:
+        return f" It comes inside the cone of the reflection limit, {degrees(wide)}."
+    return f" It stays outside the cone of the reflection limit, {degrees(wide)}."
 
 
 def short_cause(one: Blindness) -> str:
@@ -141,17 +184,19 @@ def _text(one: Blindness, result: Result) -> BlindnessText:
     width = ""
     if np.isfinite(worst.width):
         width = f", {_width_text(worst.width)} wide where more than half of the power comes back"
-    where = (
-        f"At {_place(worst)}{port}: {_level(worst)} come back{width}{opposite}."
-    )  # fmt: skip
-    return BlindnessText(title, inside, where, _moves(one), _power(worst, result), _cause(one), _advice(one, job))
+    where = f"At {_place(worst)}{port}: {_level(worst)} come back{width}{opposite}.{_against_limits(one, job)}"
+    return BlindnessText(title, inside, where, _moves(one), _power(worst, result), _cause(one), advice(one, job))
 
 
 def _place(peak: Peak) -> str:
     return (
-        f"theta {degrees(peak.theta)}, phi {azimuth_text(peak.phi)} (u = {peak.u:.4f}, v = {peak.v + 0.0:.4f}), "
+        f"theta {degrees(peak.theta)}, phi {azimuth_text(peak.phi)} (u = {_cosine(peak.u)}, v = {_cosine(peak.v)}), "
         f"{peak.frequency / 1e9:.6g} GHz"
     )
+
+
+def _cosine(value: float) -> str:
+    return f"{round(value, 4) + 0.0:.4f}"
 
 
 def azimuth_text(phi: float) -> str:
@@ -210,85 +255,6 @@ def _quality(one: Blindness) -> str:
     if not np.isfinite(q):
         return ""
     return f", with a quality factor of {q:.3g}"
-
-
-def _advice(one: Blindness, job: Job) -> str:
-    """What would move it, where physics says so plainly."""
-    peak, cause = one.worst, one.cause
-    if cause.kind == "resonance":
-        return (
-            "What moves it is the element: its length or size, the feed, the height over ground. A study of those "
-            "dimensions tells; no number can be promised."
-        )
-    k = 2 * np.pi * peak.frequency / LIGHT_SPEED
-    said = [_spacing_advice(one, job.cell.lattice, k)]
-    stack = job.cell.stack
-    if cause.kind == "surface wave" and stack is not None:
-        said += [
-            _stack_advice(one, job.cell.lattice, k, stack, "thickness"),
-            _stack_advice(one, job.cell.lattice, k, stack, "permittivity"),
-            "Fences or cavities round each element, and elements whose currents do not run along (TM) or across (TE) "
-            "that wave, weaken it (common practice).",
-        ]
-    return " ".join(text for text in said if text)
-
-
-def _spacing_advice(one: Blindness, lattice: Lattice, k: float) -> str:
-    met = [
-        meeting_angle(_scaled(lattice, 1 - less), k, one.cause.order, one.cause.expected, one.worst.phi)
-        for less in LESS
-    ]
-    texts = [f"{100 * less:.0f} % less: {_met_text(theta)}" for less, theta in zip(LESS, met, strict=True)]
-    now = meeting_angle(lattice, k, one.cause.order, one.cause.expected, one.worst.phi)
-    meets = "meets it" if one.cause.kind == "surface wave" else "starts"
-    return (
-        f"A closer lattice moves it outwards: in this azimuth the Floquet wave {meets} at {_met_text(now)} now, with "
-        f"the spacing {', '.join(texts)}."
-    )
-
-
-def _stack_advice(one: Blindness, lattice: Lattice, k: float, stack: Stack, what: str) -> str:
-    """Angle at which the wave is met with all layers 10 % thinner, or of 10 % less permittivity (but not below 1)."""
-    factor = 1 - LESS[-1]
-    if what == "thickness":
-        layers = tuple(replace(layer, thickness=factor * layer.thickness) for layer in stack.layers)
-    else:
-        layers = tuple(
-            replace(layer, permittivity=max(1.0, factor * layer.permittivity)) if layer.permittivity > 1 else layer
-            for layer in stack.layers
-        )
-    try:
-        waves = guided_waves(Stack(layers, stack.ground), k)
-    except (RuntimeError, ValueError):
-        return ""
-    name = f"{100 * LESS[-1]:.0f} % {'thinner layers' if what == 'thickness' else 'less permittivity'}"
-    beta = next((float(np.real(w.beta)) for w in waves if w.name == one.cause.wave), None)
-    if beta is None:
-        return f"With {name} there is no {one.cause.wave} any more."
-    theta = meeting_angle(lattice, k, one.cause.order, beta, one.worst.phi)
-    sheets = ", sheets left out" if stack.sheets else ""
-    return f"With {name}{sheets} {one.cause.wave} runs at {beta:.4f} k and is met at {_met_text(theta)}."
-
-
-def meeting_angle(lattice: Lattice, k: float, order: tuple[int, int], index: float, phi: float) -> float:
-    """Least scan angle (rad) in the azimuth phi at which the Floquet wave `order` runs at ``index k``:
-    ``|s (cos phi, sin phi) + G/k| = index``; NaN where it never does."""
-    g = np.array(order) @ lattice.reciprocal / k
-    along = float(g @ [np.cos(phi), np.sin(phi)])
-    rest = along**2 - float(g @ g) + index**2
-    if rest < 0:
-        return np.nan
-    roots = np.array([-along - np.sqrt(rest), -along + np.sqrt(rest)])
-    roots = roots[(roots >= 0) & (roots <= 1)]
-    return float(np.arcsin(roots.min())) if len(roots) else np.nan
-
-
-def _scaled(lattice: Lattice, factor: float) -> Lattice:
-    return Lattice(lattice.a * factor, lattice.b * factor)
-
-
-def _met_text(theta: float) -> str:
-    return f"theta {np.degrees(theta):.1f} deg" if np.isfinite(theta) else "no angle"
 
 
 def _cone_text(theta: float) -> str:

@@ -20,7 +20,8 @@ from scanward.cases.read import parse_case
 from scanward.cases.report import report_text
 from scanward.cases.run import run_case
 from scanward.cases.store import load_result, save_result
-from scanward.cases.survey_text import blindness_summary, blindness_texts, meeting_angle, signed_rows
+from scanward.cases.survey_advice import meeting_angle
+from scanward.cases.survey_text import blindness_summary, blindness_texts, signed_rows
 from scanward.geometry.errors import InputError
 from scanward.geometry.lattice import Lattice
 from scanward.solver.guided_waves import guided_waves
