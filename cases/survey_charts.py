@@ -35,6 +35,7 @@ from .survey_text import short_cause
 
 MOST_MAPS = 6
 FLOOR = -30.0  # dB
+COARSE = 96  # dots per inch of several smooth maps in one figure
 
 
 def reflection_maps(result: Result) -> Drawing | None:
@@ -118,44 +119,63 @@ def _circles(axis: Any, result: Result, frequency: float) -> None:
 
 
 def angle_map(result: Result) -> Drawing | None:
-    """Worst active reflection over the band, over scan angle and azimuth."""
+    """Active reflection over scan angle and azimuth, at a few frequencies and the worst over the band."""
     survey = result.survey
     if survey is None:
         return None
-    theta, phi = np.radians(np.linspace(0, 89, 179)), np.radians(np.linspace(0, 360, 361))
-    level = _resampled(survey, worst_level(survey).max(axis=0), theta, phi)
-    with style():
-        figure = canvas(WIDTH, 2.9)
-        axis = figure.subplots()
-        picture = axis.pcolormesh(
-            np.degrees(phi), np.degrees(theta), level, cmap=MAP, vmin=FLOOR, vmax=0.0, shading="gouraud",
-            rasterized=True,
-        )  # fmt: skip
-        cone = survey.free_cone
-        turn = np.append(cone.azimuth, 2 * np.pi)
-        clear = cone.theta.min(axis=0)
-        axis.plot(np.degrees(turn), np.degrees(np.append(clear, clear[0])), color=ALARM, linewidth=1.2)
-        axis.axhline(np.degrees(cone.wanted), color="white", linestyle="--", linewidth=1.1)
-        for one in survey.blindnesses:
-            _mark_angles(axis, one)
-        axis.set(
-            xlim=(0, 360), ylim=(0, 89), xticks=np.arange(0, 361, 45), yticks=(0, 15, 30, 45, 60, 75),
-            xlabel="azimuth φ (deg)", ylabel="scan angle θ (deg)",
-        )  # fmt: skip
-        axis.grid(False)
-        bar = figure.colorbar(picture, ax=axis, extend="min", label="active reflection (dB)")
+    level, frequency = worst_level(survey), survey.scan_map.frequency
+    count = len(frequency)
+    chosen = [] if count == 1 else np.unique([0, count // 2, count - 1]).tolist()
+    panels = [(gigahertz(frequency[f]), level[f], survey.free_cone.theta[f], frequency[f]) for f in chosen]
+    panels.append(("worst over the band", level.max(axis=0), survey.free_cone.theta.min(axis=0), None))
+    columns = min(2, len(panels))
+    rows = -(-len(panels) // columns)
+    with style(COARSE):
+        figure = canvas(WIDTH, 0.5 + rows * (2.1 if columns == 2 else 2.6))
+        axes = figure.subplots(rows, columns, squeeze=False, sharex=True, sharey=True)
+        picture = None
+        for axis, (title, values, clear, at) in zip(axes.ravel(), panels, strict=False):
+            picture = _angle_panel(axis, survey, values, clear, at)
+            axis.set_title(title)
+        for axis in axes.ravel()[len(panels) :]:
+            axis.set_visible(False)
+        for axis in axes[-1]:
+            axis.set_xlabel("azimuth φ (deg)")
+        for axis in axes[:, 0]:
+            axis.set_ylabel("scan angle θ (deg)")
+        assert picture is not None
+        bar = figure.colorbar(picture, ax=axes, extend="min", label="active reflection (dB)", shrink=0.85)
         bar.outline.set_visible(False)
         data = render(figure)
     return Drawing(
         "angle-map", data, "image/svg+xml",
-        "Worst active reflection over the band and the driven ports. Red line: where the limit is first passed, at any "
-        "frequency. White dashed: the cone of the limit. Crosses: blindness; rings: strong mismatch.",
-        "Colour map of the worst active reflection over azimuth and scan angle.",
+        "Active reflection over scan angle and azimuth, worst of the driven ports. Red line: where the limit is first "
+        "passed. White dashed: the cone of the limit. Crosses: blindness; rings: strong mismatch.",
+        "Colour maps of active reflection over azimuth and scan angle, by frequency and at worst.",
     )  # fmt: skip
 
 
-def _mark_angles(axis: Any, one: Blindness) -> None:
+def _angle_panel(axis: Any, survey: Survey, level: Floats, clear: Floats, frequency: float | None) -> Any:
+    """One map with the clear angle (n_azimuth,) and the peaks at `frequency`, all of them for None."""
+    theta, phi = np.radians(np.linspace(0, 89, 120)), np.radians(np.linspace(0, 360, 241))
+    picture = axis.pcolormesh(
+        np.degrees(phi), np.degrees(theta), _resampled(survey, level, theta, phi), cmap=MAP, vmin=FLOOR, vmax=0.0,
+        shading="gouraud", rasterized=True,
+    )  # fmt: skip
+    turn = np.append(survey.free_cone.azimuth, 2 * np.pi)
+    axis.plot(np.degrees(turn), np.degrees(np.append(clear, clear[0])), color=ALARM, linewidth=1.1)
+    axis.axhline(np.degrees(survey.free_cone.wanted), color="white", linestyle="--", linewidth=1.1)
+    for one in survey.blindnesses:
+        _mark_angles(axis, one, frequency)
+    axis.set(xlim=(0, 360), ylim=(0, 89), xticks=np.arange(0, 361, 90), yticks=(0, 30, 60))
+    axis.grid(False)
+    return picture
+
+
+def _mark_angles(axis: Any, one: Blindness, frequency: float | None) -> None:
     for peak in one.peaks:
+        if frequency is not None and abs(peak.frequency / frequency - 1) > 1e-6:
+            continue
         for turn in (0.0, 180.0) if one.mirrored else (0.0,):
             axis.plot(
                 (np.degrees(peak.phi) + turn) % 360, np.degrees(peak.theta), "x" if one.is_blind else "o",
