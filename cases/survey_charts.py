@@ -126,7 +126,9 @@ def angle_map(result: Result) -> Drawing | None:
     level, frequency = worst_level(survey), survey.scan_map.frequency
     count = len(frequency)
     chosen = [] if count == 1 else np.unique([0, count // 2, count - 1]).tolist()
-    panels = [(gigahertz(frequency[f]), level[f], survey.free_cone.theta[f], frequency[f]) for f in chosen]
+    panels: list[tuple[str, Floats, Floats, float | None]] = [
+        (gigahertz(float(frequency[f])), level[f], survey.free_cone.theta[f], float(frequency[f])) for f in chosen
+    ]
     panels.append(("worst over the band", level.max(axis=0), survey.free_cone.theta.min(axis=0), None))
     columns = min(2, len(panels))
     rows = -(-len(panels) // columns)
