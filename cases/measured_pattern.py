@@ -22,7 +22,7 @@ REQUIRED = {
     "cross": "cross-polar level, same unit as co",
 }
 OPTIONAL = {
-    "frequency": "Hz, kHz, MHz or GHz; needed unless the command states it",
+    "frequency": "Hz, kHz, MHz or GHz; needed where several predicted patterns would fit",
     "row": "row of the measured element",
     "column": "column of the measured element",
     "port": "its port",
